@@ -1,0 +1,1 @@
+"""Charge-to-mass ratio, mass and charge of single trapped particles, from laboratory logs."""

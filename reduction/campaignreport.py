@@ -1,0 +1,256 @@
+"""The content of a campaign's report: its tables and records as text, tables and figures ready to be set."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+
+from reduction import campaignfigures, figures, figurestyle, records, tables
+from reduction.campaigntables import (
+    NOT_TAKEN,
+    answer,
+    exact_table,
+    input_table,
+    left_out_table,
+    particle_table,
+    provenance_table,
+    remark_table,
+    settings_table,
+)
+from reduction.groups import SHARED_SCOPES, GroupResult, by_group
+from reduction.quantity import QuantityError, read_quantity
+from reduction.sheets import rows_of
+from reduction.typeset import (
+    NONE,
+    common_power,
+    foreign,
+    power_of_ten,
+    significant,
+    visible,
+)
+from reduction.units import ELEMENTARY_CHARGE
+from reduction.wholefile import read_json
+from reduction.wording import CAUTIONS, counted, input_words, joined
+
+Row = dict[str, Any]
+_BY_WORDS = {"charged_with": "what the particles were charged with"}
+FIGURES = ("agreement", "charge", "charge_to_mass", "sessions_in_time")
+_MOVED = 2.0  # in units of the stated u: beyond, an adjusted input is worth a remark
+
+
+def content(
+    results: Path, record_folders: Mapping[str, Path], *, digest: str, title: str = ""
+) -> tuple[dict[str, Any], dict[str, figurestyle.Drawing]]:
+    """Everything the template sets, and the figures by name, of one results folder."""
+    run = read_json(results / "run.json")
+    settings = run.get("settings") or {}
+    facts = {name: read_json(Path(folder) / records.FACTS) for name, folder in sorted(record_folders.items())}
+    particles = rows_of(tables.read_table(results / "particles.csv"))
+    agreement = rows_of(tables.read_table(results / "agreement.csv"))
+    inputs = [
+        row
+        for name, folder in sorted(record_folders.items())
+        if facts[name].get("status") not in NOT_TAKEN
+        for row in rows_of(tables.read_table(Path(folder) / "inputs.csv"))
+    ]
+    coverage = float(settings.get("coverage_probability", 0.95))
+    by = str((settings.get("compare") or {}).get("by", "charged_with"))
+    group_of = {(p["session"], p["particle"]): visible(str(p.get(by) or p["charged_with"] or NONE)) for p in particles}
+    components = tables.read_table(results / "components.csv")
+    taken = [p for p in particles if p["status"] != "excluded"]
+    ratio = by_group(taken, group_of, "charge_to_mass_C_per_kg", coverage=coverage,
+                     components=_shared(components, "charge_to_mass", 1.0))  # fmt: skip
+    charge = by_group(taken, group_of, "charge_e", coverage=coverage,
+                      components=_shared(components, "charge", 1 / ELEMENTARY_CHARGE))  # fmt: skip
+    in_time = _in_time(facts, agreement)
+    drawings = _drawings(particles, group_of, ratio, charge, in_time, agreement)
+    left_out = left_out_table(run, facts, particles)
+    plain_title = visible(str(title or settings.get("title") or ""))
+    title = foreign(plain_title)
+    dates = sorted(str(f["date"]) for f in facts.values() if f.get("date"))
+    doc: dict[str, Any] = {
+        "title": f"Campaign report: {plain_title}" if title else "Campaign report",
+        "kind": "Campaign report",
+        "headline": title if 0 < len(title) <= 80 else "Campaign",
+        "subline": title if len(title) > 80 else "Charge-to-mass ratio, mass and charge of single trapped particles",
+        "running": title if 0 < len(title) <= 70 else "Campaign report",
+        "digest": digest,
+        "digest_word": "Run",
+        "facts": _facts(facts, particles, dates),
+        "answer": answer(ratio, charge, coverage),
+        "answer_words": _answer_words(by, coverage),
+        "trust": _trust(particles, agreement, inputs, ratio),
+        "left_out": left_out,
+        "figures": {name: _set(drawing, name) for name, drawing in drawings.items()},
+        "ratio_words": _caption(ratio),
+        "charge_words": _caption(charge),
+        "agreement_words": "One mark per particle; outside the grey band two methods disagree by more than twice the "
+        "standard uncertainty of their difference.",
+        "inputs": input_table(inputs),
+        "particles": particle_table(particles, group_of),
+        "remarks": remark_table(particles),
+        "exact": exact_table(facts),
+        "settings": settings_table(settings),
+        "provenance": provenance_table(run),
+        "input_files": _input_files(run),
+        "cautions": [list(words) for words in CAUTIONS],
+    }
+    return doc, drawings
+
+
+def _shared(components: pd.DataFrame, result: str, factor: float) -> dict[tuple[str, str], dict[str, float]]:
+    """Signed components of one result that sessions have in common, by particle."""
+    chosen = components[(components["result"] == result) & components["scope"].isin(sorted(SHARED_SCOPES))]
+    out: dict[tuple[str, str], dict[str, float]] = {}
+    for session, particle, name, component in zip(
+        chosen["session"], chosen["particle"], chosen["input"], chosen["component"], strict=True
+    ):
+        out.setdefault((session, particle), {})[name] = factor * component
+    return out
+
+
+def _in_time(facts: Mapping[str, Row], agreement: Sequence[Row]) -> list[Row]:
+    worst: dict[str, float] = {}
+    for row in agreement:
+        if math.isfinite(row["normalized_error"]):
+            worst[row["session"]] = max(worst.get(row["session"], 0.0), abs(row["normalized_error"]))
+    rows = []
+    for session, fact in facts.items():
+        if fact.get("status") in NOT_TAKEN:
+            continue
+        stray = fact.get("stray_field") or {}
+        humidity, u_humidity = _read((fact.get("air") or {}).get("relative_humidity_percent"))
+        rows.append(
+            {
+                "session": session,
+                "date": str(fact.get("date") or ""),
+                "stray_estimate": _float(stray.get("estimate")),
+                "stray_u": _float(stray.get("u")),
+                "stray_adjusted": _float(stray.get("adjusted")),
+                "stray_adjusted_u": _float(stray.get("adjusted_u")),
+                "worst": worst.get(session, math.nan),
+                "humidity": humidity,
+                "u_humidity": u_humidity,
+            }
+        )
+    return sorted(rows, key=lambda row: (row["date"], row["session"]))
+
+
+def _float(value: object) -> float:
+    return float(value) if isinstance(value, int | float) else math.nan
+
+
+def _read(value: object) -> tuple[float, float]:
+    try:
+        read = read_quantity(value)
+    except QuantityError:
+        return math.nan, math.nan
+    return read.estimate, read.u
+
+
+def _answer_words(by: str, coverage: float) -> str:
+    return (
+        f"Grouped by {_BY_WORDS.get(by, by.replace('_', ' '))}. Mean of session means, with the interval of "
+        f"{100 * coverage:g} % coverage. The unit is the session, not the particle; what sessions share (trap, "
+        "species, instruments, formulas) is in the interval and does not shrink with more of them."
+    )
+
+
+def _drawings(
+    particles: Sequence[Row], group_of: Mapping[tuple[str, str], str], ratio: Sequence[GroupResult],
+    charge: Sequence[GroupResult], in_time: Sequence[Row], agreement: Sequence[Row],
+) -> dict[str, figurestyle.Drawing]:  # fmt: skip
+    with figurestyle.styled():
+        power = common_power([p["charge_to_mass_C_per_kg"] for p in particles])
+        made = {
+            "charge_to_mass": campaignfigures.by_group(
+                "charge-to-mass ratio", f"({power_of_ten(power)} C kg⁻¹)" if power else "(C kg⁻¹)", 10.0**-power, ratio,
+                particles, group_of, "charge_to_mass_C_per_kg", "u_charge_to_mass_C_per_kg"),
+            "charge": _charge_figure(particles, group_of, charge),
+            "sessions_in_time": campaignfigures.sessions_in_time(in_time),
+            "agreement": campaignfigures.agreement(agreement),
+        }  # fmt: skip
+    return {name: drawing for name, drawing in made.items() if drawing}
+
+
+def _charge_figure(
+    particles: Sequence[Row], group_of: Mapping[tuple[str, str], str], charge: Sequence[GroupResult]
+) -> figurestyle.Drawing | None:
+    power = common_power([p["charge_e"] for p in particles])
+    unit = f"({power_of_ten(power)} e)" if power else "e"
+    return campaignfigures.by_group("charge", unit, 10.0**-power, charge, particles, group_of, "charge_e", "u_charge_e")
+
+
+def _set(drawing: figurestyle.Drawing, name: str) -> Row:
+    return {"svg": drawing.svg, "alt": drawing.alt, "width": figures.WIDTH,
+            "caption": f"The numbers drawn are in figures/{name}.csv."}  # fmt: skip
+
+
+def _caption(results: Sequence[GroupResult]) -> str:
+    return (
+        f"{counted(sum(r.particles for r in results), 'particle')} in {counted(len(results), 'group')}. "
+        "Marks: particles with their standard uncertainty; upright strokes: session means; diamond and heavy bar: "
+        "mean of session means with its interval, where at least two sessions give one; an arrow where "
+        "it goes on beyond the axis."
+    )
+
+
+def _facts(facts: Mapping[str, Row], particles: Sequence[Row], dates: Sequence[str]) -> list[list[str]]:
+    taken = [f for f in facts.values() if f.get("status") not in NOT_TAKEN]
+    measured = sum(math.isfinite(p["charge_to_mass_C_per_kg"]) for p in particles)
+    pairs = [
+        ["Sessions", f"{len(taken)} reduced of {len(facts)}" if len(taken) < len(facts) else f"{len(taken)} reduced"],
+        ["Particles", f"{measured} with a result of {len(particles)}"],
+        ["Measured", f"{dates[0]} to {dates[-1]}" if dates and dates[0] != dates[-1] else (dates or [NONE])[0]],
+    ]
+    for key, label in (("trap", "Traps"), ("species", "Species"), ("charged_with", "Charged with")):
+        values = sorted({str(f[key]) for f in taken if f.get(key)})
+        shown = ", ".join(values[:6]) + (f" and {len(values) - 6} more" if len(values) > 6 else "")
+        pairs.append([label, foreign(shown or NONE)])
+    return pairs
+
+
+def _trust(
+    particles: Sequence[Row], agreement: Sequence[Row], inputs: Sequence[Row], ratio: Sequence[GroupResult]
+) -> list[str]:
+    words = []
+    errors = [abs(a["normalized_error"]) for a in agreement if math.isfinite(a["normalized_error"])]
+    if errors:
+        inside = sum(e <= 1 for e in errors)
+        words.append(
+            f"Methods agree in {inside} of {len(errors)} comparisons (normalised error within 1); the largest is "
+            f"{significant(max(errors), 2)}."
+        )
+    else:
+        words.append("No particle was measured by two methods that give the same quantity: nothing checks the result.")
+    poor = [p for p in particles if "chi_square" in p["flags"].split(";")]
+    if poor:
+        words.append(
+            f"{counted(len(poor), 'particle scatters', 'particles scatter')} more than stated (chi-square, p < 0.01): "
+            "take the stated u as too small."
+        )
+    lone = [foreign(r.group) for r in ratio if r.sessions < 2]
+    if lone:
+        words.append(f"Fewer than two sessions: {joined(lone)}. Described, not compared; no interval is given.")
+    strained = sorted(
+        {i["input"] for i in inputs if i["u"] > 0 and abs(i["adjusted_estimate"] - i["estimate"]) > _MOVED * i["u"]}
+    )
+    if strained:
+        named = [foreign(", ".join(filter(None, input_words(name)))) for name in strained[:4]]
+        more = f" and {len(strained) - 4} more" if len(strained) > 4 else ""
+        words.append(f"Moved by more than {_MOVED:g} u when adjusted, worth a look: {'; '.join(named)}{more}.")
+    sizes = sum("size_from_lot" in p["flags"].split(";") for p in particles)
+    if sizes:
+        words.append(
+            f"Of {counted(sizes, 'particle')} only the lot's mean and spread fix the size; mass and charge follow it."
+        )
+    return words
+
+
+def _input_files(run: Row) -> str:
+    count = len(run.get("inputs") or {})
+    return f"Digests of the {counted(count, 'input file')} and of every session stand in run.json." if count else ""

@@ -1,0 +1,191 @@
+"""The command line `motescale`: arguments in, one message and an exit status out."""
+
+from __future__ import annotations
+
+import argparse
+import sys
+from collections.abc import Callable, Sequence
+from pathlib import Path
+
+from reduction.errors import ReductionError
+
+CAUTION = (
+    "Kilovolts can injure or kill, laser light can blind, fine organic powder can burn and be inhaled. Local rules and "
+    "qualified staff come first."
+)
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(
+        prog="motescale",
+        description="Charge-to-mass ratio, mass and charge of single trapped particles, from laboratory logs.",
+        epilog=CAUTION,
+    )
+    parser.add_argument("--version", action="store_true", help="print the version and end")
+    parser.add_argument("--traceback", action="store_true", help=argparse.SUPPRESS)
+    commands = parser.add_subparsers(dest="command", metavar="COMMAND")
+
+    def command(name: str, run: Callable[[argparse.Namespace], int], about: str) -> argparse.ArgumentParser:
+        made = commands.add_parser(name, help=about, description=about[0].upper() + about[1:] + ".", epilog=CAUTION)
+        made.set_defaults(run=run)
+        return made
+
+    one = command("check", _check, "find every fault in a campaign, and how each of its files is read")
+    one.add_argument("campaign", type=Path, help="folder that holds campaign.yaml and sessions/")
+
+    one = command("run", _run, "reduce a campaign to tables and reports, as far as anything changed")
+    one.add_argument("campaign", type=Path, help="folder that holds campaign.yaml and sessions/")
+    one.add_argument("results", type=Path, help="folder for the results; made where it is not there")
+    one.add_argument("--cores", type=_cores, help="how many processor cores to use (all)")
+    loudness = one.add_mutually_exclusive_group()
+    loudness.add_argument("--quiet", action="store_true", help="print nothing but errors")
+    loudness.add_argument("--verbose", action="store_true", help="print what the workflow says too")
+
+    one = command("new", _new, "write an empty campaign with commented files")
+    one.add_argument("campaign", type=Path, help="folder to write")
+
+    one = command("session", _session, "add a session to a campaign, set up like another")
+    one.add_argument("campaign", type=Path, help="folder that holds campaign.yaml and sessions/")
+    one.add_argument("session", help="id of the new session")
+    one.add_argument("--like", metavar="OTHER", help="session whose settings are taken over")
+
+    one = command("simulate", _simulate, "write a campaign of known truth, for planning, teaching and tests")
+    one.add_argument("campaign", type=Path, help="folder to write; the truth is written beside it")
+    one.add_argument("--plan", default="room_air_light", metavar="NAME", help="what to simulate (room_air_light)")
+    one.add_argument("--plans", action="store_true", help="list the plans there are and end")
+    one.add_argument("--materials", metavar="A,B", help="materials the particles are charged with, taken in turn")
+    one.add_argument("--sessions", type=int, help="number of sessions")
+    one.add_argument("--particles", type=int, help="particles in each session")
+    one.add_argument("--outliers", type=float, metavar="SHARE", help="share of readings that are grossly wrong")
+    one.add_argument("--charge-drift", type=float, metavar="PER_S", help="relative change of charge per second")
+    one.add_argument("--seed", type=int, default=1, help="same seed, same campaign (1)")
+
+    one = command("explain", _explain, "tell step by step how one particle's numbers came about")
+    one.add_argument("results", type=Path, help="a results folder")
+    one.add_argument("session", help="id of the session")
+    one.add_argument("particle", help="id of the particle")
+    return parser
+
+
+def _cores(text: str) -> int:
+    if not text.isdecimal() or int(text) < 1:
+        message = f"{text} is no number of cores"
+        raise argparse.ArgumentTypeError(message)
+    return int(text)
+
+
+def _say(text: str) -> None:
+    sys.stdout.write(text.rstrip("\n") + "\n")
+
+
+def _check(asked: argparse.Namespace) -> int:
+    from reduction.steps import check
+
+    _say(check(asked.campaign))
+    return 0
+
+
+def _run(asked: argparse.Namespace) -> int:
+    from reduction.running import run
+
+    loudness = "quiet" if asked.quiet else "verbose" if asked.verbose else "normal"
+    return run(asked.campaign, asked.results, cores=asked.cores, loudness=loudness)
+
+
+def _new(asked: argparse.Namespace) -> int:
+    from reduction.newcampaign import new_campaign
+
+    new_campaign(asked.campaign)
+    _say(f"{asked.campaign} is there. Fill in its files, then: motescale check {asked.campaign}\n{CAUTION}")
+    return 0
+
+
+def _session(asked: argparse.Namespace) -> int:
+    from reduction.newcampaign import new_session
+
+    new_session(asked.campaign, asked.session, like=asked.like)
+    _say(f"Session {asked.session} is there. Add its logs, then: motescale check {asked.campaign}\n{CAUTION}")
+    return 0
+
+
+def _simulate(asked: argparse.Namespace) -> int:
+    from dataclasses import replace
+
+    from reduction.errors import nearest
+    from reduction.simulationplan import PLANS
+
+    if asked.plans:
+        _say("\n".join(sorted(PLANS)))
+        return 0
+    if asked.plan not in PLANS:
+        message = f"there is no plan {asked.plan}. {nearest(asked.plan, PLANS)}"
+        raise ReductionError(message)
+    from reduction.simulation import simulate_campaign
+
+    plan = PLANS[asked.plan]
+    habits = plan.habits
+    if asked.outliers is not None:
+        habits = replace(habits, outliers=asked.outliers)
+    if asked.charge_drift is not None:
+        habits = replace(habits, charge_drift_per_s=asked.charge_drift)
+    plan = replace(
+        plan,
+        habits=habits,
+        sessions=plan.sessions if asked.sessions is None else asked.sessions,
+        particles=plan.particles if asked.particles is None else asked.particles,
+        materials=plan.materials if asked.materials is None else tuple(asked.materials.split(",")),
+    )
+    truth = simulate_campaign(asked.campaign, plan=plan, seed=asked.seed)
+    _say(f"{asked.campaign} is there, invented data of seed {asked.seed}; what is true stands in {truth}")
+    return 0
+
+
+def _explain(asked: argparse.Namespace) -> int:
+    from reduction.explain import explain
+
+    _say(explain(asked.results, asked.session, asked.particle))
+    return 0
+
+
+def main(argv: Sequence[str] | None = None) -> int:
+    """Run one command.
+
+    Returns
+    -------
+    int
+        0 where it did what was asked, 1 where it could not, 2 where it was not asked rightly, 130 where interrupted.
+    """
+    parser = _parser()
+    asked = parser.parse_args(argv)
+    if asked.version:
+        from reduction.digests import versions
+
+        _say(f"motescale {versions()['motescale']}")
+        return 0
+    if asked.command is None:
+        parser.print_help(sys.stderr)
+        return 2
+    try:
+        return int(asked.run(asked))
+    except ReductionError as error:
+        sys.stderr.write(f"{error}\n")
+    except BrokenPipeError:
+        sys.stderr.close()  # whoever was reading has gone; nothing is left to be said
+    except OSError as error:
+        where = f"{error.filename}: " if error.filename else ""
+        sys.stderr.write(f"{where}{error.strerror or error}. Look at the folder, its permissions and the space left.\n")
+    except KeyboardInterrupt:
+        sys.stderr.write("Interrupted. What was finished stays; the same command goes on from there.\n")
+        return 130
+    except Exception as error:
+        if asked.traceback or getattr(asked, "verbose", False):
+            raise
+        sys.stderr.write(
+            f"Stopped by {type(error).__name__}: {error}. This is a fault of the program; please report it with what "
+            f"`motescale --traceback {asked.command} ...` prints.\n"
+        )
+    return 1
+
+
+if __name__ == "__main__":
+    sys.exit(main())

@@ -1,0 +1,98 @@
+"""One session solved and turned into results: what every table and the report of the session are written from."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from reduction import budget
+from reduction.adjustment import Adjusted
+from reduction.budget import OwnSize, Results, results_of
+from reduction.logs import Logs
+from reduction.methods import Array, Flags, Indices
+from reduction.preparation import Prepared
+from reduction.settings import Campaign, Session
+from reduction.solution import Reduced, is_determined
+
+S, GAMMA, DIAMETER, MASS, CHARGE, DENSITY = range(6)  # places of the results, in the order of budget.RESULTS
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """A reduced session; `place` leads from a particle to its row in the adjustment and in the results."""
+
+    campaign: Campaign
+    session: Session
+    logs: Logs
+    prepared: Prepared
+    reduced: Reduced
+    adjusted: Adjusted
+    place: Mapping[int, int]
+    names: tuple[str, ...]  # of the particles adjusted, in their order
+    alone: bool  # each particle kept to itself
+    results: Results
+    dof: Array
+    low: Array
+    high: Array
+    sure: Flags  # (N, 2), charge-to-mass ratio and drag rate
+    sized: Flags  # (N,), diameter
+    reading_words: dict[tuple[str, int], list[str]] = field(default_factory=dict)  # log and row: flags
+    flagged: list[list[object]] = field(default_factory=list)  # log, line, particle, text
+
+    def known(self, place: int) -> list[bool]:
+        """Which of the results of one row of the adjustment are determined."""
+        s, gamma = self.sure[place]
+        sized = bool(self.sized[place]) and bool(np.isfinite(self.results.value[place, MASS]))
+        return [bool(s), bool(gamma), sized, sized, bool(s) and sized, bool(s) and sized]
+
+
+def outcome_of(
+    campaign: Campaign, session: Session, logs: Logs, reduced: Reduced, adjusted: Adjusted, chosen: Indices
+) -> Outcome:
+    """Results, degrees of freedom and intervals of the `chosen` particles, as they were adjusted."""
+    prepared, options = reduced.prepared, campaign.options
+    alone = options.adjust == "particle" or adjusted is reduced.alone
+    size = own_sizes(prepared, chosen) if options.mass_from == "diameter" else None
+    results = results_of(adjusted, alone=alone, size=size)
+    dof = budget.effective_dof(results, reduced.scatter)
+    low, high = budget.interval(results, dof, options.coverage_probability)
+    sure = is_determined(adjusted)
+    return Outcome(
+        campaign,
+        session,
+        logs,
+        prepared,
+        reduced,
+        adjusted,
+        {int(index): place for place, index in enumerate(chosen)},
+        tuple(prepared.names[index] for index in chosen),
+        alone,
+        results,
+        dof,
+        low,
+        high,
+        sure,
+        sure[:, 1] if size is None else np.isfinite(size.u),
+    )
+
+
+def own_sizes(prepared: Prepared, chosen: Indices) -> OwnSize:
+    """Own diameter, else the lot's mean with its spread, of the chosen particles; u is nan where there is neither."""
+    count = len(chosen)
+    diameter, u, lot = np.ones(count), np.full(count, math.nan), np.zeros(count, bool)
+    log = prepared.logs.get("diameter")
+    if log is None:
+        return OwnSize(diameter, u, lot)
+    place = {int(index): row for row, index in enumerate(chosen)}
+    estimate = {one.role: one.quantity.estimate for one in prepared.setting.inputs}
+    for at, index in enumerate(log.particle):
+        row = place.get(int(index))
+        if row is not None:
+            lot[row] = log.lot[at]
+            kind = prepared.species[int(index)]
+            diameter[row] = estimate[f"lot_diameter:{kind}"] if log.lot[at] else log.observed[at]
+            u[row] = log.u[at]
+    return OwnSize(diameter, u, lot)

@@ -1,0 +1,135 @@
+"""What the report of one session tells beside its tables: the content of session.json."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from reduction.adjustment import adjust_alone
+from reduction.budget import Results, results_of
+from reduction.charge import electrons
+from reduction.curves import curves_of
+from reduction.methods import Flags
+from reduction.outcome import CHARGE, DIAMETER, MASS, Outcome, own_sizes
+from reduction.quantity import shorthand
+from reduction.resultrows import adjusted_inputs
+from reduction.solution import is_determined
+
+
+def facts(outcome: Outcome) -> dict[str, Any]:
+    """Content of session.json: what the report tells beside the tables."""
+    session, air, site = outcome.session, outcome.session.air, outcome.session.site
+    stray = next(one for one in outcome.prepared.setting.inputs if one.role == "stray_field")
+    adjusted = adjusted_inputs(outcome).get(stray.name, (None, None))
+    return {
+        "session": session.id,
+        "status": "excluded" if session.exclude else "ok",
+        "reason": session.exclude,
+        "date": session.date,
+        "trap": session.trap,
+        "species": session.species,
+        "charged_with": session.charged_with,
+        "operator": session.operator,
+        "session_notes": session.notes,
+        "contacts": session.contacts,
+        "attributes": dict(sorted(session.attributes.items())),
+        "instruments": dict(sorted(session.instruments.items())),
+        "air": {
+            "temperature_degC": _plain(air.temperature.estimate - 273.15, air.temperature.u),
+            "pressure_hPa": _plain(air.pressure.estimate / 100.0, air.pressure.u / 100.0),
+            "relative_humidity_percent": _plain(
+                air.relative_humidity.estimate * 100.0, air.relative_humidity.u * 100.0
+            ),
+        },
+        "site": {
+            name: _plain(one.estimate, one.u)
+            for name, one in (
+                ("gravity_m_per_s2", site.gravity),
+                ("latitude_rad", site.latitude),
+                ("elevation_m", site.elevation),
+            )
+            if one is not None
+        },
+        "height_reading": session.height_reading,
+        "secular_reading": session.secular_reading,
+        "adjust": outcome.campaign.options.adjust,
+        "drag": outcome.campaign.options.drag,
+        "mass_from": outcome.campaign.options.mass_from,
+        "scatter": outcome.campaign.options.scatter,
+        "lot": outcome.campaign.options.lot,
+        "coverage_probability": outcome.campaign.options.coverage_probability,
+        "exact_inputs": [
+            [one.name, repr(one.written), one.unit] for one in outcome.prepared.setting.inputs if not one.quantity.u
+        ],
+        "left_out": [[log, line, name, reason] for log, line, name, reason in outcome.prepared.left_out]
+        + [["particles", 0, name, reason] for name, reason in sorted(outcome.prepared.excluded.items())],
+        "flagged": outcome.flagged,
+        "notes": _notes(outcome),
+        "extra_columns": {log: list(names) for log, names in sorted(outcome.logs.extra_columns.items()) if names},
+        "dialects": dict(sorted(outcome.logs.dialects.items())),
+        "scatter_dof": {log: dof for log, dof in sorted(outcome.reduced.scatter.items())},
+        "stray_field": {
+            "estimate": stray.quantity.estimate,
+            "u": stray.quantity.u,
+            "adjusted": adjusted[0],
+            "adjusted_u": adjusted[1],
+        },
+        "masses": _masses(outcome),
+        "curves": curves_of(
+            outcome.prepared,
+            outcome.adjusted,
+            list(outcome.names),
+            [place for place in range(len(outcome.names)) if outcome.sure[place, 0]],
+        ),
+    }
+
+
+def _notes(outcome: Outcome) -> list[str]:
+    notes = []
+    for log, dof in sorted(outcome.reduced.scatter.items()):
+        notes.append(
+            f"The uncertainty of one reading of {log}.csv comes from its scatter, with {dof:.3g} degrees "
+            "of freedom pooled over the session."
+        )
+    for index, reason in enumerate(outcome.reduced.reasons):
+        if reason:
+            notes.append(f"Particle {outcome.prepared.names[index]}: {reason}.")
+    return notes
+
+
+def _masses(outcome: Outcome) -> dict[str, list[dict[str, Any]]]:
+    """Diameter, mass and charge of each particle from the adjusted drag rate, drag alone and diameter alone."""
+    found: dict[str, list[dict[str, Any]]] = {name: [] for name in outcome.names}
+    base, theta = outcome.reduced.alone.model, outcome.reduced.alone.theta
+    chosen = np.array(sorted(outcome.place), dtype=np.intp)
+    if not len(chosen):
+        return found
+    drag = adjust_alone(base.without("diameter"), theta, near=True)
+    ways: list[tuple[str, Results, Flags]] = []
+    if outcome.campaign.options.mass_from == "adjusted":
+        ways.append(("adjusted", outcome.results, outcome.sure[:, 1]))
+    ways.append(("drag", results_of(drag, alone=True), is_determined(drag)[:, 1]))
+    sizes = own_sizes(outcome.prepared, np.arange(base.particles, dtype=np.intp))
+    ways.append(("diameter", results_of(drag, alone=True, size=sizes), np.isfinite(sizes.u)))
+    for name, index in zip(list(outcome.names), chosen, strict=True):
+        for way, results, sure in ways:
+            row = outcome.place[int(index)] if results is outcome.results else int(index)
+            value, u = results.value[row], results.u[row]
+            if sure[row] and outcome.sure[outcome.place[int(index)], 0] and np.isfinite(value[MASS]):
+                found[name].append(
+                    {
+                        "mass_from": way,
+                        "diameter_um": value[DIAMETER] * 1e6,
+                        "u_diameter_um": u[DIAMETER] * 1e6,
+                        "mass_kg": value[MASS],
+                        "u_mass_kg": u[MASS],
+                        "charge_e": float(electrons(value[CHARGE])),
+                        "u_charge_e": float(electrons(u[CHARGE])),
+                    }
+                )
+    return found
+
+
+def _plain(estimate: float, u: float) -> str:
+    return shorthand(estimate, u) if u else repr(round(estimate, 9))

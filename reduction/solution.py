@@ -1,0 +1,364 @@
+"""One session solved: methods alone, particles alone, all together."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+
+import numpy as np
+from scipy import stats
+
+from reduction.adjustment import Adjusted, Model, adjust_alone, adjust_together, normal_equations
+from reduction.agreement import MethodEstimate
+from reduction.fits import UNDETERMINED, MethodFit, drift_asked_for, fit_method
+from reduction.methods import (
+    DRIFT,
+    LN_GAMMA,
+    LN_S,
+    LOGS,
+    ORIGIN,
+    SHAPE,
+    Array,
+    Flags,
+    Indices,
+    Readings,
+    linearise,
+    with_reynolds,
+)
+from reduction.preparation import Prepared, with_u
+from reduction.starts import Start, starts_of
+
+OUTLIER = 4.0  # standard deviations from its method's fit beyond which a reading is flagged
+DOUBLE = 4.0  # chi-square within which a second solution counts as equally good
+ACTIVE = {"balance": (LN_S,), "height": (LN_S, LN_GAMMA, ORIGIN), "secular": (LN_S, LN_GAMMA), "diameter": (LN_GAMMA,)}
+
+
+@dataclass
+class Reduced:
+    """A session while and after it is reduced; arrays and lists run over the particles."""
+
+    prepared: Prepared
+    model: Model
+    starts: list[list[Start]]
+    fits: dict[str, list[MethodFit]]
+    scatter: dict[str, float]  # log: degrees of freedom of the u taken from its scatter
+    flags: list[set[str]]
+    alone: Adjusted
+    estimates: list[dict[str, MethodEstimate]]
+    dof: Indices  # of each particle adjusted alone
+    open: Flags  # particles with no single solution, left to themselves
+    reasons: list[str]
+
+
+def _provisional(readings: Mapping[str, Readings], unstated: Mapping[str, Flags]) -> dict[str, Readings]:
+    """A rough u, equal over the log, where none is stated: only its ratio to the others matters until the scatter."""
+    found = {}
+    for name, log in readings.items():
+        rough = {"balance": 0.01, "height": 0.05, "secular": 0.01}.get(name, 0.0)
+        size = float(np.median(np.abs(log.observed))) if len(log) else 0.0
+        if name == "height" and len(log):
+            size = float(np.ptp(log.observed))
+        found[name] = with_u(log, np.where(unstated[name], max(rough * size, 1e-300), log.u))
+    return found
+
+
+def fit_session(prepared: Prepared, scatter_policy: str) -> Reduced:
+    """Fit every method of every particle alone and adjust every particle alone."""
+    count = len(prepared.names)
+    logs = _provisional(prepared.logs, prepared.unstated)
+    model = Model(prepared.setting, logs, np.ones(count), np.zeros(count, bool))
+    flags: list[set[str]] = [set() for _ in range(count)]
+    starts = [starts_of(_no_drift(model), index) for index in range(count)]
+    model = replace(model, sign=np.array([one[0].sign if one else 1.0 for one in starts]))
+    theta = np.array([one[0].theta if one else np.zeros(5) for one in starts]).reshape(count, 5)
+    drifting = _drifting(model, prepared)
+    model = _with_drift(model, drifting)
+    fits = _fit_methods(model, starts, theta)
+    scatter: dict[str, float] = {}
+    if any(mask.any() for mask in prepared.unstated.values()):
+        model, scatter = _from_scatter(model, prepared, fits)
+        starts = [starts_of(model, index) for index in range(count)]
+        theta = np.array([one[0].theta if one else np.zeros(5) for one in starts]).reshape(count, 5)
+        fits = _fit_methods(model, starts, theta)
+    for index in range(count):
+        flags[index] |= _method_flags(model, fits, index, scatter)
+    model = _possible(model, fits, starts)
+    alone, is_open, reasons = _alone(model, starts, theta, flags)
+    if scatter_policy == "inflate":
+        alone = adjust_alone(_inflated(alone, fits, scatter, flags), alone.theta, near=True)
+    estimates = _method_estimates(alone.model, fits)
+    dof = _alone_dof(alone)
+    for index in range(count):
+        if not scatter and dof[index] > 0 and stats.chi2.sf(alone.cost[index], dof[index]) < 0.01:
+            flags[index].add("chi_square")
+        if drifting[index]:
+            flags[index].add("charge_drift")
+        if prepared.neighbours[index]:
+            flags[index].add("neighbours")
+        if not prepared.setting.has_density[index]:
+            flags[index].add("no_density")
+    return Reduced(prepared, alone.model, starts, fits, scatter, flags, alone, estimates, dof, is_open, reasons)
+
+
+def _no_drift(model: Model) -> Model:
+    return _with_drift(model, np.zeros(model.particles, bool))
+
+
+def _with_drift(model: Model, drifting: Flags) -> Model:
+    logs = {
+        name: replace(log, elapsed=np.where(drifting[log.particle], log.elapsed, 0.0))
+        for name, log in model.logs.items()
+    }
+    return replace(model, logs=logs, drifting=drifting)
+
+
+def _drifting(model: Model, prepared: Prepared) -> Flags:
+    """Particles whose balance log asks for a charge drift."""
+    found = np.zeros(model.particles, bool)
+    log = model.logs.get("balance")
+    if log is None:
+        return found
+    for index in np.unique(log.particle[log.elapsed != 0.0]):
+        scatter = bool(prepared.unstated["balance"][log.particle == index].any())
+        found[index] = drift_asked_for(log.of(int(index)), scatter=scatter)
+    return found
+
+
+def _fit_methods(model: Model, starts: list[list[Start]], theta: Array) -> dict[str, list[MethodFit]]:
+    """Every method of every particle by itself, from where the scan of all its logs begins."""
+    fits: dict[str, list[MethodFit]] = {}
+    for name in LOGS:
+        if name not in model.logs:
+            continue
+        log = model.logs[name]
+        fits[name] = []
+        for index in range(model.particles):
+            active = ACTIVE[name] + ((DRIFT,) if name == "balance" and model.drifting[index] else ())
+            fit = fit_method(
+                name, model.setting.of(index), log.of(index), theta[index], float(model.sign[index]), active
+            )
+            fits[name].append(_qualified(fit, log.of(index)))
+    return fits
+
+
+def _qualified(fit: MethodFit, log: Readings) -> MethodFit:
+    """Say what the rank test cannot: one drive voltage, one dc voltage, no sign."""
+    if fit.method == "secular" and fit.status == "ok":
+        return replace(fit, sign=0.0)
+    if fit.method != "height" or not len(log) or fit.status not in ("ok", "not_determined"):
+        return fit
+    if np.ptp(log.voltage) == 0.0:
+        return replace(
+            fit,
+            status="not_determined",
+            determined=(False, False),
+            reason="heights at one dc voltage have two solutions",
+        )
+    if np.ptp(log.amplitude / log.omega**2) == 0.0 and fit.status == "not_determined":
+        return replace(fit, reason="one drive voltage gives a relation between charge-to-mass and drag rate only")
+    return fit
+
+
+def _from_scatter(
+    model: Model, prepared: Prepared, fits: Mapping[str, list[MethodFit]]
+) -> tuple[Model, dict[str, float]]:
+    """Replace missing u by the scatter of each log about the methods' fits, pooled over the session.
+
+    u^2 = sum of squared residuals / degrees of freedom; a log with none left cannot be used.
+    """
+    logs, scatter = dict(model.logs), {}
+    for name, log in model.logs.items():
+        missing = prepared.unstated[name]
+        if not missing.any():
+            continue
+        total, dof = 0.0, 0.0
+        for index, fit in enumerate(fits[name]):
+            own = missing[log.particle == index]
+            if fit.status in ("ok", "not_determined") and fit.dof > 0 and own.any():
+                u = log.u[log.particle == index][own]
+                total += float(((fit.residual[own] * u) ** 2).sum())
+                dof += fit.dof * own.sum() / len(own)
+        if dof < 1.0 or total == 0.0:
+            logs[name] = log.select(~missing)
+            continue
+        logs[name] = with_u(log, np.where(missing, np.sqrt(total / dof), log.u))
+        scatter[name] = dof
+    return replace(model, logs=logs), scatter
+
+
+def _method_flags(
+    model: Model, fits: Mapping[str, list[MethodFit]], index: int, scatter: Mapping[str, float]
+) -> set[str]:
+    found = set()
+    for name, own in fits.items():
+        fit = own[index]
+        if fit.status == "no_oscillation":
+            found.add("no_oscillation")
+        elif fit.status == "unstable":
+            found.add("unstable")
+        if name in scatter and fit.readings:
+            found.add("u_from_scatter")
+    return found
+
+
+def _inflated(
+    alone: Adjusted, fits: Mapping[str, list[MethodFit]], scatter: Mapping[str, float], flags: list[set[str]]
+) -> Model:
+    """Enlarge the u of a log's readings by the Birge ratio sqrt(chi2 / nu) where that exceeds 1.
+
+    Chi-square is that of the adjusted values: a log is not to be blamed for errors of the shared inputs, which the
+    method alone holds at their estimates.
+    """
+    logs = dict(alone.model.logs)
+    for name, line in alone.lines.items():
+        if name in scatter or name == "diameter":
+            continue
+        log = logs[name]
+        chi_square = np.bincount(log.particle, line.residual**2, alone.model.particles)
+        factor = np.ones(alone.model.particles)
+        for index, fit in enumerate(fits[name]):
+            if fit.dof > 0 and chi_square[index] > fit.dof:
+                factor[index] = np.sqrt(chi_square[index] / fit.dof)
+                flags[index].add("inflated")
+        logs[name] = replace(log, u=log.u * factor[log.particle], u_voltage=log.u_voltage * factor[log.particle])
+    return replace(alone.model, logs=logs)
+
+
+def _possible(model: Model, fits: Mapping[str, list[MethodFit]], starts: list[list[Start]]) -> Model:
+    """Without the logs whose readings no motion of the particle can give, and particles nothing can be said of."""
+    logs = {}
+    for name, log in model.logs.items():
+        bad = [
+            index
+            for index, fit in enumerate(fits[name])
+            if fit.status in ("no_oscillation", "unstable")
+            or not starts[index]
+            or (starts[index] and name in starts[index][0].impossible)
+        ]
+        logs[name] = log.select(~np.isin(log.particle, bad))
+    return replace(model, logs=logs)
+
+
+def _alone(
+    model: Model, starts: list[list[Start]], theta: Array, flags: list[set[str]]
+) -> tuple[Adjusted, Flags, list[str]]:
+    """Each particle adjusted alone from every start; what fits equally well elsewhere is said, not chosen."""
+    count = model.particles
+    is_open, reasons = np.zeros(count, bool), [""] * count
+    best = _with_shifts(adjust_alone(model, theta))
+    sign, chosen, cost = model.sign.copy(), best.theta.copy(), best.cost.copy()
+    rivals: list[list[tuple[float, float, Array]]] = [[] for _ in range(count)]
+    for rank in range(1, max((len(one) for one in starts), default=0)):
+        indices = np.array([index for index in range(count) if len(starts[index]) > rank], dtype=np.intp)
+        part = model.subset(indices)
+        part = replace(part, sign=np.array([starts[index][rank].sign for index in indices]))
+        other = adjust_alone(part, np.array([starts[index][rank].theta for index in indices]))
+        for place, index in enumerate(indices):
+            rivals[index].append((float(other.cost[place]), float(part.sign[place]), other.theta[place]))
+            if other.cost[place] < cost[index] - 0.01:
+                rivals[index].append((float(cost[index]), float(sign[index]), chosen[index].copy()))
+                cost[index], sign[index], chosen[index] = other.cost[place], part.sign[place], other.theta[place]
+    if (sign != best.model.sign).any() or (chosen != best.theta).any():
+        best = _with_shifts(adjust_alone(replace(model, sign=sign), chosen))
+    u = np.sqrt(np.clip(np.einsum("nii->ni", best.covariance), 0.0, None))
+    for index in range(count):
+        for rival_cost, rival_sign, rival in rivals[index]:
+            same = rival_sign == sign[index] and abs(rival[LN_S] - best.theta[index, LN_S]) < 5.0 * u[index, LN_S]
+            if not same and rival_cost < best.cost[index] + DOUBLE:
+                is_open[index], reasons[index] = True, "two solutions fit the readings equally well"
+                flags[index].add("two_solutions")
+        signed = any(
+            len(log) and (log.particle == index).any()
+            for name, log in best.model.logs.items()
+            if name in ("balance", "height")
+        )
+        if not signed and starts[index]:
+            flags[index].add("sign_undetermined")
+        if not starts[index]:
+            is_open[index], reasons[index] = True, "no log says anything of its charge-to-mass ratio"
+        elif not best.settled[index] and not is_open[index]:
+            is_open[index], reasons[index] = True, "the adjustment did not settle"
+    return best, is_open, reasons
+
+
+def _with_shifts(adjusted: Adjusted) -> Adjusted:
+    """The same adjusted again with the finite-Reynolds shifts that its values imply."""
+    model = adjusted.model
+    if "height" not in model.logs:
+        return adjusted
+    height = with_reynolds(model.setting, model.logs["height"], adjusted.theta, model.sign)
+    return adjust_alone(replace(model, logs={**model.logs, "height": height}), adjusted.theta, near=True)
+
+
+def _alone_dof(alone: Adjusted) -> Indices:
+    """Readings less free unknowns of each particle; an unknown that only its prior fixes takes none."""
+    readings = sum((normal.readings for normal in alone.normals.values()), np.zeros(alone.model.particles, np.intp))
+    free = alone.model.active.copy()
+    free[:, SHAPE] = False
+    u = np.sqrt(np.clip(np.einsum("nii->ni", alone.covariance), 0.0, None))
+    free[:, LN_GAMMA] &= u[:, LN_GAMMA] < 100.0
+    free[:, LN_S] &= u[:, LN_S] < 100.0
+    left: Indices = np.maximum(readings - free.sum(axis=1), 0)
+    return left
+
+
+def _method_estimates(model: Model, fits: Mapping[str, list[MethodFit]]) -> list[dict[str, MethodEstimate]]:
+    """Value, own u and components by shared input of every method that determines something, by particle."""
+    found: list[dict[str, MethodEstimate]] = [{} for _ in range(model.particles)]
+    width = len(model.setting.uncertain)
+    for name, log in model.logs.items():
+        theta = np.zeros((model.particles, 5))
+        active = np.zeros((model.particles, 5), bool)
+        usable = []
+        for index, fit in enumerate(fits[name]):
+            if any(fit.determined) and (log.particle == index).any():
+                usable.append(index)
+                theta[index] = np.nan_to_num(fit.theta, nan=0.0)
+                active[index, list(fit.active)] = True
+                active[index, SHAPE] = name == "diameter" and model.setting.shape_spread[index] > 0.0
+        if not usable:
+            continue
+        part = model.subset(np.array(usable, dtype=np.intp))
+        theta, active = theta[usable], active[usable]
+        line = linearise(part.setting, {name: part.logs[name]}, theta, part.sign, np.zeros((1, width)))[name]
+        normal = normal_equations(part.logs[name], line, part.particles, active)
+        square = normal.private.copy()
+        diagonal = np.where(active, 0.0, 1.0) + np.where(active & (np.arange(5) == SHAPE), 1.0, 0.0)
+        diagonal[:, [LN_S, LN_GAMMA]] += 1e-8
+        square[:, np.arange(5), np.arange(5)] += diagonal
+        inverse = np.linalg.inv(square)
+        response = -inverse @ normal.cross
+        for place, index in enumerate(usable):
+            fit = fits[name][index]
+            sign = part.sign[place] if fit.sign else 1.0
+            value = np.array([sign * np.exp(theta[place, LN_S]), np.exp(theta[place, LN_GAMMA])])
+            private = np.sqrt(np.diag(inverse[place])[[LN_S, LN_GAMMA]])
+            origin = inverse[place, ORIGIN, ORIGIN] + (response[place, ORIGIN] ** 2).sum()
+            found[index][name] = MethodEstimate(
+                value,
+                private,
+                response[place][[LN_S, LN_GAMMA]],
+                np.array(fit.determined, dtype=bool),
+                bool(fit.sign),
+                float(np.sqrt(origin)),
+            )
+    return found
+
+
+def adjust_session(reduced: Reduced, adjust: str) -> tuple[Adjusted, Indices]:
+    """Final adjustment of the particles that have one solution, and which those are.
+
+    With `adjust: particle` each keeps to itself; else the session's particles pin the inputs they share.
+    """
+    chosen = np.flatnonzero(~reduced.open).astype(np.intp)
+    if adjust == "particle" or not len(chosen):
+        return reduced.alone, np.arange(reduced.model.particles, dtype=np.intp)
+    model = reduced.model.subset(chosen)
+    return adjust_together([model], [reduced.alone.theta[chosen]])[0], chosen
+
+
+def is_determined(adjusted: Adjusted) -> Flags:
+    """Whether charge-to-mass ratio and drag rate of each particle are determined: u of the logarithm at most 0.5."""
+    u = np.sqrt(np.clip(np.einsum("nii->ni", adjusted.covariance), 0.0, None))
+    sure: Flags = (u[:, [LN_S, LN_GAMMA]] <= UNDETERMINED) & adjusted.settled[:, None]
+    return sure

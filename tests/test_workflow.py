@@ -1,0 +1,395 @@
+"""The workflow: what is computed when, and that nothing is lost, mixed or touched that should not be.
+
+All but the last tests run on stand-ins for the physics (see standin.py). What is expected here is the project's own
+contract; there is no published source for it.
+"""
+
+from __future__ import annotations
+
+import json
+import os
+import shutil
+import signal
+import subprocess
+import sys
+from pathlib import Path
+
+import pytest
+from standin import ROOT, Bench, add_session, campaign, checkout, contents
+
+pytestmark = pytest.mark.workflow
+
+SESSIONS = [f"s{number:02d}" for number in range(1, 13)]  # enough for two batches
+TABLES = ["agreement.csv", "budget.csv", "components.csv", "inputs.csv", "methods.csv", "particles.csv"]
+
+
+@pytest.fixture(scope="module")
+def finished(tmp_path_factory: pytest.TempPathFactory) -> Bench:
+    """A finished run, in folders with spaces, umlauts and a quote in their names; not to be changed."""
+    folder = tmp_path_factory.mktemp("finished") / "Büro (2)"
+    folder.mkdir()
+    bench = Bench(checkout(folder / "the program"), campaign(folder / "it's raw data", 12), folder / "my results")
+    ran = bench.run()
+    assert ran.returncode == 0, ran.stderr
+    assert bench.done == sorted(f"{what} {name}" for what in ("reduce", "draw") for name in SESSIONS)
+    return bench
+
+
+@pytest.fixture
+def bench(finished: Bench, tmp_path: Path) -> Bench:
+    """A copy of the finished run, to be changed."""
+    shutil.copytree(finished.campaign.parent, tmp_path / "bench dir", symlinks=True)
+    parts = (finished.program.name, finished.campaign.name, finished.results.name)
+    return Bench(*(tmp_path / "bench dir" / part for part in parts))
+
+
+def edit(path: Path, text: str) -> None:
+    """Change a file and keep its time stamp."""
+    before = path.stat()
+    path.write_text(text)
+    os.utime(path, ns=(before.st_atime_ns, before.st_mtime_ns))
+
+
+def good(ran: subprocess.CompletedProcess[str]) -> None:
+    assert ran.returncode == 0, ran.stdout + ran.stderr
+
+
+def test_run_gives_every_file_of_the_contract(finished: Bench) -> None:
+    expected = [*TABLES, "report.pdf", "run.json"]
+    expected += [
+        f"{folder}/{name}{end}" for name in SESSIONS for folder, end in (("readings", ".csv"), ("sessions", ".pdf"))
+    ]
+    assert sorted(contents(finished.results)) == sorted(expected)
+
+
+def test_second_run_has_nothing_to_do(bench: Bench) -> None:
+    before = contents(bench.results)
+    ran = bench.run()
+    good(ran)
+    assert "Nothing to be done" in ran.stderr
+    assert bench.done == []
+    assert contents(bench.results) == before
+
+
+def test_edit_that_keeps_its_time_stamp_redoes_that_session_alone(bench: Bench) -> None:
+    before = contents(bench.results)
+    edit(bench.campaign / "sessions" / "s03" / "balance.csv", "particle,balance_voltage_V\n1,9999\n")
+    good(bench.run())
+    assert bench.done == ["draw s03", "reduce s03"]
+    after = contents(bench.results)
+    pages = {name for name in after if name.startswith("sessions/") and after[name] != before[name]}
+    assert pages == {"sessions/s03.pdf"}
+    assert after["particles.csv"] != before["particles.csv"]
+    assert "Nothing to be done" in bench.run("--dry-run").stdout
+
+
+def test_new_time_stamp_alone_redoes_nothing(bench: Bench) -> None:
+    for path in bench.campaign.rglob("*"):
+        path.touch()
+    good(bench.run())
+    assert bench.done == []
+
+
+def test_added_session_is_computed_and_a_removed_one_leaves_nothing(bench: Bench) -> None:
+    add_session(bench.campaign, "a-first")
+    shutil.rmtree(bench.campaign / "sessions" / "s02")
+    (bench.results / "sessions" / "notes of mine.txt").write_text("kept")
+    good(bench.run())
+    assert bench.done == ["draw a-first", "reduce a-first"]
+    after = contents(bench.results)
+    assert "sessions/a-first.pdf" in after
+    assert "readings/a-first.csv" in after
+    assert not [name for name in after if "s02" in name]
+    assert "s02" not in json.loads(after["run.json"])["sessions"]
+    assert not (bench.results / ".motescale" / "records" / "s02").exists()
+    assert "sessions/notes of mine.txt" in after
+
+
+@pytest.mark.parametrize(
+    ("name", "text", "redone"),
+    [
+        ("traps/ring.yaml", "dc_polarity: -1\n", ["draw", "reduce"]),
+        ("species/bead.yaml", "density_kg_per_m3: 1051\n", ["draw", "reduce"]),
+        ("species/glass.yaml", "density_kg_per_m3: 2501\n", []),  # no session has it
+        ("campaign.yaml", "title: Stand-in\nseed: 2\n", ["draw", "reduce"]),
+        ("campaign.yaml", "title: Another\nseed: 1\n", ["draw"]),
+        ("campaign.yaml", "title: Stand-in\nseed: 1\nevery_session: {operator: me}\n", ["draw", "reduce"]),
+        ("campaign.yaml", "title: Stand-in\nseed: 1\nevery_session: {notes: given by each}\n", []),
+    ],
+)
+def test_settings_redo_what_depends_on_them(bench: Bench, name: str, text: str, redone: list[str]) -> None:
+    edit(bench.campaign / name, text)
+    good(bench.run())
+    assert bench.done == [f"{what} {session}" for what in redone for session in SESSIONS]
+    assert "Nothing to be done" in bench.run("--dry-run").stdout
+
+
+def test_edit_of_the_program_redoes_everything(bench: Bench) -> None:
+    with open(bench.program / "reduction" / "drag.py", "a") as module:
+        module.write("# another\n")
+    good(bench.run())
+    assert bench.done == sorted(f"{what} {name}" for what in ("reduce", "draw") for name in SESSIONS)
+
+
+@pytest.mark.parametrize("what", ["records", "pages", "reduced", ""])
+def test_deleted_records_are_made_again_to_the_same_bytes(bench: Bench, what: str) -> None:
+    before = contents(bench.results)
+    shutil.rmtree(bench.results / ".motescale" / what)
+    good(bench.run())
+    assert contents(bench.results) == before
+
+
+def test_results_do_not_depend_on_cores_batches_or_folder(bench: Bench, finished: Bench) -> None:
+    module = bench.program / "reduction" / "batches.py"
+    text = module.read_text()
+    assert "SMALLEST, MEAN, LARGEST = 5, 10, 16" in text
+    module.write_text(text.replace("SMALLEST, MEAN, LARGEST = 5, 10, 16", "SMALLEST, MEAN, LARGEST = 1, 2, 3"))
+    good(bench.run("--cores", "1", results=str(bench.results.with_name("other"))))
+    assert len(list((bench.results.with_name("other") / ".motescale" / "reduced").iterdir())) >= 4
+    before, after = contents(finished.results), contents(bench.results.with_name("other"))
+    numbers = [name for name in before if name.endswith(".csv")]  # the others name the program, which was edited
+    assert {name: after[name] for name in numbers} == {name: before[name] for name in numbers}
+
+
+def test_faults_end_the_run_before_anything_is_touched(bench: Bench) -> None:
+    before = contents(bench.results)
+    (bench.campaign / "sessions" / "s05" / "balance.csv").write_text("particle,balance_voltage_V\n1,wrong\n")
+    edit(bench.campaign / "sessions" / "s06" / "balance.csv", "particle,balance_voltage_V\n1,7\n")
+    ran = bench.run()
+    assert ran.returncode == 1
+    assert "sessions/s05/balance.csv line 2, balance_voltage_V: found wrong; expected a number" in ran.stdout
+    assert "Traceback" not in ran.stdout + ran.stderr
+    assert bench.done == []
+    assert contents(bench.results) == before
+
+
+def test_faulty_session_is_left_out_where_the_campaign_says_so(bench: Bench) -> None:
+    edit(bench.campaign / "campaign.yaml", "title: Stand-in\nseed: 1\nwhen_a_session_fails: leave_out\n")
+    (bench.campaign / "sessions" / "s05" / "balance.csv").write_text("particle,balance_voltage_V\n1,wrong\n")
+    ran = bench.run()
+    good(ran)
+    assert "session s05: left out for its faults" in ran.stdout
+    after = contents(bench.results)
+    run = json.loads(after["run.json"])
+    assert list(run["left_out"]) == ["s05"]
+    assert "expected a number" in run["left_out"]["s05"]
+    assert run["sessions"]["s05"]["status"] == "left_out"
+    assert b"expected a number" in after["sessions/s05.pdf"]
+    assert b"s05" not in after["particles.csv"]
+    assert b"s06" in after["particles.csv"]
+
+
+def test_sessions_adjusted_together_depend_on_each_other(bench: Bench) -> None:
+    edit(bench.campaign / "campaign.yaml", "title: Stand-in\nseed: 1\nadjust: campaign\n")
+    good(bench.run())
+    first = contents(bench.results)
+    edit(bench.campaign / "sessions" / "s03" / "balance.csv", "particle,balance_voltage_V\n1,9\n")
+    good(bench.run())
+    assert len(bench.done) == 2 * len(SESSIONS)
+    assert contents(bench.results)["sessions/s04.pdf"] != first["sessions/s04.pdf"]
+    good(bench.run())
+    assert bench.done == []
+
+
+@pytest.mark.parametrize("name", ["campaign", "results"])
+def test_path_that_arrives_as_a_number_is_refused(bench: Bench, name: str) -> None:
+    ran = bench.run(**{name: "0812"})
+    assert ran.returncode == 1
+    assert "Write ./ in front" in ran.stderr
+    assert not (bench.campaign.parent / "812").exists()
+
+
+def test_results_of_another_campaign_are_refused(bench: Bench, tmp_path: Path) -> None:
+    other = campaign(tmp_path / "other", 2)
+    for path in (other / "sessions").glob("*/balance.csv"):
+        path.write_text("particle,balance_voltage_V\n7,7\n")
+    before = contents(bench.results)
+    ran = bench.run(campaign=str(other))
+    assert ran.returncode == 1
+    assert "results of another campaign" in ran.stderr
+    assert contents(bench.results) == before
+
+
+def test_campaign_that_was_moved_is_still_the_same(bench: Bench) -> None:
+    moved = bench.campaign.rename(bench.campaign.with_name("moved"))
+    good(bench.run(campaign=str(moved)))
+    assert bench.done == []
+
+
+def test_second_run_at_the_same_time_is_refused_and_the_first_goes_on(bench: Bench) -> None:
+    edit(bench.campaign / "sessions" / "s03" / "balance.csv", "particle,balance_voltage_V\n1,9\n")
+    first = bench.start(STANDIN_SECONDS="6")
+    try:
+        bench.wait_for("reduce s03")
+        second = subprocess.run(
+            bench.plain(), capture_output=True, text=True, check=False, timeout=60, env=bench.environment
+        )
+        assert second.returncode == 1
+        assert "another run is going on in this folder" in second.stderr
+        out, _ = first.communicate(timeout=120)
+    finally:
+        first.kill()
+    assert first.returncode == 0, out
+
+
+@pytest.mark.parametrize("whole_group", [False, True])
+def test_plain_command_goes_on_after_a_kill(bench: Bench, finished: Bench, whole_group: bool) -> None:
+    shutil.rmtree(bench.results)
+    first = bench.start(STANDIN_SECONDS="0.3")
+    bench.wait_for("reduce s03")
+    if whole_group:
+        os.killpg(first.pid, signal.SIGKILL)
+    else:
+        first.kill()  # its jobs outlive it
+    first.communicate(timeout=60)
+    assert not (bench.results / "particles.csv").exists()
+    ran = bench.run()
+    good(ran)
+    assert len(bench.done) < 2 * len(SESSIONS)  # what was finished is not done again
+    assert contents(bench.results) == contents(finished.results)
+    assert not list(bench.results.rglob("*.part"))
+
+
+def test_failed_job_names_the_session_and_the_rest_is_kept(bench: Bench) -> None:
+    module = bench.program / "reduction" / "session.py"
+    text = module.read_text()
+    module.write_text(
+        text.replace("def reduce_session(campaign, session, logs):\n", "def reduce_session(campaign, session, logs):\n"
+        "    if session == 's02':\n        raise ZeroDivisionError('no charge')\n")
+    )  # fmt: skip
+    ran = bench.run("--keep-going")
+    assert ran.returncode == 1
+    assert "stopped by ZeroDivisionError: no charge" in ran.stdout
+    assert "Traceback" not in ran.stdout
+    logs = list((bench.results / ".motescale" / "logs").glob("reduce-*.log"))
+    assert any("ZeroDivisionError" in log.read_text() for log in logs)
+    module.write_text(text)
+    good(bench.run())
+    assert bench.done == []  # the records of the program as it was are all still there
+
+
+def test_input_edited_while_it_is_read_is_noticed(bench: Bench) -> None:
+    path = bench.campaign / "sessions" / "s03" / "balance.csv"
+    edit(path, "particle,balance_voltage_V\n1,9\n")
+    going = bench.start(STANDIN_SECONDS="3")
+    bench.wait_for("reduce s03")
+    edit(path, "particle,balance_voltage_V\n1,99999\n")
+    out, _ = going.communicate(timeout=120)
+    assert going.returncode == 1
+    assert "edited while the run was going on: s03" in out
+    good(bench.run())
+    assert bench.done == ["draw s03", "reduce s03"]
+
+
+def test_modules_in_the_results_folder_are_not_imported(bench: Bench) -> None:
+    shutil.rmtree(bench.results / ".motescale")
+    for name in ("pandas.py", "json.py", "reduction.py"):
+        (bench.results / name).write_text("raise SystemExit('the wrong module')")
+    good(bench.run())
+    good(bench.motescale("run", str(bench.campaign), str(bench.results)))
+
+
+def test_installed_copy_that_differs_is_refused(bench: Bench, tmp_path: Path) -> None:
+    installed = tmp_path / "installed"
+    shutil.copytree(bench.program, installed)
+    shutil.rmtree(bench.program / "motescale-0.dist-info")
+    with open(installed / "reduction" / "drag.py", "a") as module:
+        module.write("# another\n")
+    ran = bench.finish(bench.plain(), PYTHONPATH=str(installed))
+    assert ran.returncode == 1
+    assert "differ. Install this one again" in ran.stderr
+
+
+def test_results_that_are_a_file_are_refused(bench: Bench) -> None:
+    file = bench.results.with_name("a file")
+    file.write_text("mine")
+    ran = bench.run(results=str(file))
+    assert ran.returncode == 1
+    assert "cannot be written to" in ran.stderr
+    assert file.read_text() == "mine"
+
+
+def test_command_gives_the_same_bytes_and_tells_how_far_it_is(bench: Bench, finished: Bench) -> None:
+    other = bench.results.with_name("by command")
+    ran = bench.motescale("run", str(bench.campaign), str(other), "--cores", "1")
+    good(ran)
+    assert contents(other) == contents(finished.results)
+    assert "reduce: 12 of 12 sessions reduced" in ran.stdout
+    assert "session_reports: 12 of 12 session reports drawn" in ran.stdout
+    assert "First finished run in this folder: 12 particles." in ran.stdout
+    assert ran.stderr == ""
+
+
+def test_command_ends_with_what_moved_and_why(bench: Bench) -> None:
+    quiet = bench.motescale("run", "--quiet", str(bench.campaign), str(bench.results))
+    good(quiet)
+    assert quiet.stdout == ""
+    path = bench.campaign / "sessions" / "s03" / "balance.csv"
+    before = len(path.read_text())  # the stand-in's number, with u = 0.5
+    path.write_text("particle,balance_voltage_V\n1,s03\n")
+    ran = bench.motescale("run", str(bench.campaign), str(bench.results))
+    good(ran)
+    assert f"s03 1, charge-to-mass ratio: {before} -> {before - 6} (-12 u)" in ran.stdout
+    assert "file edited sessions/s03/balance.csv" in ran.stdout
+    assert "Since the last run 1 numbers of 1 particles moved" in ran.stdout
+    assert "no number moved" in bench.motescale("run", str(bench.campaign), str(bench.results)).stdout
+
+
+def test_command_passes_on_what_the_workflow_refuses(bench: Bench, tmp_path: Path) -> None:
+    (bench.campaign / "sessions" / "s05" / "balance.csv").write_text("particle,balance_voltage_V\n1,wrong\n")
+    for loudness in ([], ["--quiet"]):
+        ran = bench.motescale("run", *loudness, str(bench.campaign), str(bench.results))
+        assert ran.returncode == 1
+        assert "expected a number" in ran.stdout + ran.stderr
+    other = campaign(tmp_path / "other", 1)
+    (other / "sessions" / "s01" / "balance.csv").write_text("particle,balance_voltage_V\n7,7\n")
+    ran = bench.motescale("run", str(other), str(bench.results))
+    assert ran.returncode == 1
+    assert "results of another campaign" in ran.stderr
+    assert "Traceback" not in ran.stderr
+
+
+def test_lint_remarks_on_nothing_but_environments(bench: Bench) -> None:
+    ran = subprocess.run(
+        [sys.executable, "-m", "snakemake", "--snakefile", str(bench.program / "Snakefile"), "--lint", "--config",
+         f"campaign={bench.campaign}", f"results={bench.results}"],
+        capture_output=True, text=True, check=False, env=bench.environment, cwd=bench.campaign.parent,
+    )  # fmt: skip
+    remarks = [line.strip() for line in (ran.stdout + ran.stderr).splitlines() if line.startswith("    * ")]
+    # the environment is the one the program is installed in, pinned by requirements.lock
+    assert remarks == 6 * ["* Specify a conda environment or container for each rule.:"]
+
+
+@pytest.fixture(scope="module")
+def example(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """Results of the example, computed by the real program."""
+    results = tmp_path_factory.mktemp("example") / "results"
+    command = [sys.executable, "-m", "snakemake", "--snakefile", str(ROOT / "Snakefile"), "--cores", "2"]
+    ran = subprocess.run(
+        [*command, "--config", f"results={results}"], capture_output=True, text=True, check=False, cwd=results.parent
+    )
+    assert ran.returncode == 0, ran.stdout + ran.stderr
+    return results
+
+
+def test_example_runs_to_its_reports(example: Path) -> None:
+    sessions = sorted(path.name for path in (ROOT / "data_example" / "sessions").iterdir())
+    assert sorted(path.stem for path in (example / "sessions").glob("*.pdf")) == sessions
+    assert sorted(path.stem for path in (example / "readings").glob("*.csv")) == sessions
+    for path in [example / "report.pdf", *(example / "sessions").glob("*.pdf")]:
+        assert path.read_bytes().startswith(b"%PDF-")
+    assert all((example / name).stat().st_size > 0 for name in TABLES)
+
+
+def test_example_gives_the_same_bytes_again_and_names_no_place_or_person(example: Path) -> None:
+    other = example.with_name("again")
+    ran = subprocess.run(
+        [sys.executable, "-m", "reduction.command", "run", str(ROOT / "data_example"), str(other), "--cores", "1"],
+        capture_output=True, text=True, check=False, cwd=ROOT, env={**os.environ, "TZ": "Asia/Tokyo", "LC_ALL": "C"},
+    )  # fmt: skip
+    assert ran.returncode == 0, ran.stdout + ran.stderr
+    first, second = contents(example), contents(other)
+    assert first == second
+    told = [str(example).encode(), str(ROOT).encode(), os.uname().nodename.encode(), str(Path.home()).encode() + b"/"]
+    for name, data in first.items():
+        assert not [word for word in told if len(word) > 3 and word in data], name

@@ -1,0 +1,14 @@
+# Purpose: reduce all sessions together, where the campaign asks for `adjust: campaign`.
+# Input:   the files of the whole campaign, by the digest of their content.
+# Output:  a record for each session (.motescale/records/), one note.
+
+
+rule adjust:
+    output:
+        ".motescale/adjusted.json",
+    params:
+        digest=PLAN.adjusted,
+    log:
+        ".motescale/logs/adjust.log",
+    shell:
+        "step adjust 2> {log:q}"

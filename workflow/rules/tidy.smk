@@ -1,0 +1,17 @@
+# Purpose: remove what is of sessions no longer there; keep what the next run is compared with.
+# Input:   everything else.
+# Output:  a note.
+
+
+rule tidy:
+    input:
+        rules.tables.output,
+        rules.report.output,
+    output:
+        ".motescale/tidied.json",
+    log:
+        ".motescale/logs/tidy.log",
+    params:
+        digest=PLAN.campaign,
+    shell:
+        "step tidy 2> {log:q}"
