@@ -34,6 +34,8 @@ RIDGE = 1e-8  # information added to ln s and ln gamma: u of what is open stays 
 ROUNDS = 60
 SETTLED = 1e-6  # of u: settled when the next step promises to lower chi-square by less than its square
 LONGEST = 1.0  # longest step in a logarithm
+SETTLED_TOGETHER = 1e-4  # the same for a group, where rounding of thousands of readings adds up
+FARTHEST = 4.0  # longest step of a shared input, in its u
 
 
 @dataclass(frozen=True)
@@ -103,10 +105,11 @@ def normal_equations(log: Readings, line: Linearised, particles: int, active: ND
     width = jacobian.shape[1]
     square, gradient = np.zeros((particles, width, width)), np.zeros((particles, width))
     chi_square, readings = np.zeros(particles), np.zeros(particles, np.intp)
-    bounds = np.searchsorted(log.particle, np.arange(particles + 1))
+    bounds = np.searchsorted(log.particle, np.arange(particles + 1)).tolist()
+    residuals = np.nan_to_num(line.residual)  # a missing one has no slope either
     for one in range(particles):
         part = slice(bounds[one], bounds[one + 1])
-        rows, residual = jacobian[part], np.nan_to_num(line.residual[part])  # a missing one has no slope either
+        rows, residual = jacobian[part], residuals[part]
         square[one], gradient[one] = rows.T @ rows, rows.T @ residual
         chi_square[one], readings[one] = residual @ residual, len(residual)
     count = active.shape[1]
@@ -214,8 +217,9 @@ def _assemble(model: Model, theta: Array, normals: Mapping[str, Normal]) -> tupl
 
 
 def _shortened(step: Array) -> Array:
-    """Factor that keeps the longest step in ln s and ln gamma within bounds, by particle."""
+    """Factor that keeps the longest step in ln s, ln gamma and, behind the private ones, xi in bounds, by particle."""
     longest = np.abs(step[:, [LN_S, LN_GAMMA]]).max(axis=1)
+    longest = np.maximum(longest, np.abs(step[:, 5:]).max(axis=1, initial=0.0) * LONGEST / FARTHEST)
     factor: Array = np.minimum(1.0, LONGEST / np.maximum(longest, 1e-300))
     return factor
 
@@ -359,6 +363,7 @@ def adjust_together(models: list[Model], starts: list[Array]) -> list[Adjusted]:
         cost = sum(one.cost() for one in members) + float(xi @ xi)
         steps, move, size = _group_step(members, xi, damping)
         factor = min([1.0, *(float(_shortened(step).min()) for step in steps if len(step))])
+        factor = min(factor, FARTHEST / max(float(np.abs(move).max(initial=0.0)), FARTHEST))
         while True:
             trial = sum(
                 one.trial_cost(one.theta + factor * step, xi + factor * move)
@@ -372,7 +377,7 @@ def adjust_together(models: list[Model], starts: list[Array]) -> list[Adjusted]:
             for one, step in zip(members, steps, strict=True):
                 one.theta = one.theta + factor * step
                 one.renew(xi)
-        if size < SETTLED or factor < 1e-9:
+        if size < SETTLED_TOGETHER or factor < 1e-9:
             settled = factor >= 1e-9 or size < 1e-3
             break
     return _finished(members, xi, group, settled)

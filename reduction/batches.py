@@ -118,7 +118,7 @@ def make_plan(campaign: Path) -> Plan:
 
 def _other_names(campaign: Path) -> list[str]:
     """Names the check may find fault with: a new one must make a run begin, so that the check is run."""
-    names = [path.name for path in campaign.glob("*") if not path.name.startswith(".")]
-    for part in ("traps", "species", "sessions"):
-        names += [f"{part}/{path.name}" for path in (campaign / part).glob("*") if not path.name.startswith(".")]
-    return sorted(names)
+    names = [path.name for path in campaign.glob("*.y*ml")]
+    for pattern in ("traps/*", "species/*", "sessions/*", "sessions/*/*"):
+        names += [path.relative_to(campaign).as_posix() for path in campaign.glob(pattern)]
+    return sorted(name for name in names if "/." not in name)

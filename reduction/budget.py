@@ -17,7 +17,17 @@ import numpy as np
 from scipy import stats
 
 from reduction.adjustment import Adjusted
-from reduction.methods import LN_GAMMA, LN_S, SHAPE, STEP, Array, particle_properties, surroundings
+from reduction.methods import (
+    LN_GAMMA,
+    LN_S,
+    SHAPE,
+    STEP,
+    Array,
+    Setting,
+    Surroundings,
+    particle_properties,
+    surroundings,
+)
 
 RESULTS = ("charge_to_mass", "drag_rate", "diameter", "mass", "charge", "surface_charge_density")
 UNITS = {
@@ -73,27 +83,51 @@ class Results:
         return np.abs(self.value) * np.sqrt(self.variance)
 
 
-def _logarithms(adjusted: Adjusted, theta: Array, xi: Array, size: OwnSize | None) -> Array:
-    """Ln of the size of each result, (P, N, 6); nan where it takes a density that is not given."""
-    setting = adjusted.model.setting
-    around = surroundings(setting, xi)
-    particle = particle_properties(setting, around, theta, np.ones(adjusted.model.particles))
+def result_logarithms(
+    setting: Setting, around: Surroundings, theta: Array, size: OwnSize | None, deviation: Array | float = 0.0
+) -> Array:
+    """Ln of the size of each result at many rows of the unknowns and of the shared inputs.
+
+    Parameters
+    ----------
+    setting : Setting
+        Of the session.
+    around : Surroundings
+        Shared inputs, (P, N or 1).
+    theta : ndarray, shape (P, N, 5)
+        Private unknowns.
+    size : OwnSize or None
+        Where the size comes from the diameter method alone.
+    deviation : ndarray or float
+        How far that diameter lies from its reading or from the lot's mean [m], (P, N).
+
+    Returns
+    -------
+    ndarray, shape (P, N, 6)
+        In the order of `RESULTS`; nan where it takes a density that is not given.
+    """
+    particle = particle_properties(setting, around, theta, np.ones(theta.shape[1]))
     ln_s = np.broadcast_to(theta[..., LN_S], particle.diameter.shape)
     ln_d = np.log(particle.diameter)
     if size is not None:
         gain = around.values["gain_diameter"]
-        own = np.where(size.lot, 1.0, gain) * size.diameter
+        own = np.where(size.lot, 1.0, gain) * (size.diameter + deviation)
         for name in set(setting.species):
             role = f"lot_diameter:{name}"
             if role in around.values:
                 which = np.array([one == name for one in setting.species]) & size.lot.astype(bool)
-                own = np.where(which, around.values[role], own)
+                own = np.where(which, around.values[role] + deviation, own)
         ln_d = np.broadcast_to(np.log(own), ln_s.shape)
     ln_rho = np.log(particle.density)
     ln_m = np.log(np.pi / 6.0) + ln_rho + 3.0 * ln_d
     ln_gamma = np.broadcast_to(theta[..., LN_GAMMA], ln_s.shape)
     stacked: Array = np.stack([ln_s, ln_gamma, ln_d, ln_m, ln_s + ln_m, ln_s + ln_rho + ln_d - np.log(6.0)], axis=-1)
     return stacked
+
+
+def _logarithms(adjusted: Adjusted, theta: Array, xi: Array, size: OwnSize | None) -> Array:
+    setting = adjusted.model.setting
+    return result_logarithms(setting, surroundings(setting, xi), theta, size)
 
 
 def results_of(adjusted: Adjusted, *, alone: bool, size: OwnSize | None = None) -> Results:

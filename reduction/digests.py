@@ -7,6 +7,7 @@ import json
 import platform
 import re
 import stat
+import tomllib
 from collections.abc import Iterable, Mapping
 from functools import cache
 from importlib import metadata
@@ -19,7 +20,7 @@ from reduction import places
 
 ID = re.compile(r"[A-Za-z0-9][A-Za-z0-9_-]{0,63}")
 SESSION_FILES = ("session.yaml", "balance.csv", "secular.csv", "height.csv", "particles.csv", "lost.csv")
-LIBRARIES = ("lmfit", "matplotlib", "numpy", "pandas", "scipy", "typst", "uncertainties")
+LIBRARIES = ("lmfit", "matplotlib", "numpy", "pandas", "scipy", "typst")
 
 LARGEST = 200 * 2**20  # beyond it a file is refused by the check; it is not read here [bytes]
 DEEPEST = 40  # levels of YAML beyond which a file is taken as it is
@@ -73,13 +74,20 @@ def package_digest(package: Path = places.PACKAGE, workflow: Path | None = None)
 @cache
 def versions() -> Mapping[str, str]:
     """Versions of Python, this package and the libraries that numbers or pages pass through."""
-    found = {"python": platform.python_version()}
-    for name in ("motescale", *LIBRARIES):
+    found = {"motescale": _own_version(), "python": platform.python_version()}
+    for name in LIBRARIES:
         try:
             found[name] = metadata.version(name)
         except metadata.PackageNotFoundError:
-            found[name] = "checkout" if name == "motescale" else "not installed"
+            found[name] = "not installed"
     return found
+
+
+def _own_version() -> str:
+    project = places.root() / "pyproject.toml"
+    if project.is_file():  # a checkout, installed or not
+        return str(tomllib.loads(project.read_text(encoding="utf-8"))["project"]["version"])
+    return metadata.version("motescale")
 
 
 def code_digest() -> str:

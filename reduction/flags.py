@@ -17,7 +17,10 @@ FLAGS: dict[str, str] = {
     "inflated": "a method's scatter exceeds what is stated; its uncertainty was enlarged by the Birge ratio",
     "u_from_scatter": "the uncertainty of a reading was taken from the scatter of its log",
     "above_air_limit": "the surface charge density exceeds what air at 3 MV/m holds over flat surfaces",
-    "neighbours": "other particles were in the trap while the balance was read",
+    "neighbours": "other particles were in the trap and may have biased the balance by more than 1 %",
+    "outside_window": "a drive was logged at which a particle of this charge and drag would not have been held",
+    "resolution": "readings come in steps coarser than their stated uncertainty",
+    "factor_suspected": "a constant factor, such as rms taken for peak, would bring the readings together",
     "size_from_lot": "only the lot's mean and spread fix the size",
 }
 """Word: sentence. Several words of one particle are joined by a semicolon."""

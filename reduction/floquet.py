@@ -6,10 +6,13 @@ tau = Omega t / 2. Half the trace of u's monodromy, cos(2 pi nu), tells the regi
 
 from __future__ import annotations
 
+from functools import cache
+
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from reduction.recurrence import (
+    AT_ONCE,
     Complex,
     Flags,
     Medium,
@@ -65,13 +68,13 @@ def half_trace_share(h: Values, b: Values) -> Values:
     """
     squared = h * h
     c = 0.25 * b * b
-    last = 32 + int(8.0 * np.sqrt(np.max(h, initial=0.0)))
+    last = 32 + int(8.0 * np.sqrt(h.max(initial=0.0)))
     outer = _far_wing(last + 1, squared, c)
     inner = _far_wing(last, squared, c)
-    beyond = h / (last * last + c)
-    for n in range(last - 1, 0, -1):
-        own = h / (n * n + c)
-        inner, outer, beyond = inner - own * beyond * outer, inner, own
+    below = (np.arange(1.0, last + 1.0) ** 2)[:, None] + c
+    products = squared / (below[1:] * below[:-1])
+    for product in products[::-1]:
+        inner, outer = inner - product * outer, inner
     delta = inner * (4.0 * c * inner - 8.0 * squared / (1.0 + c) * outer)
     half = 0.5 * np.pi * b
     growth = 0.5 * np.pi * np.where(half > 1e-4, np.sinh(half) / np.where(half > 1e-4, half, 1.0), 1.0 + half**2 / 6.0)
@@ -92,6 +95,7 @@ def _far_wing(first: int, squared: Values, c: Values) -> Values:
     return np.asarray(np.exp(-squared * total - 1.5 * squared**2 * _tail_sum(8, first)))
 
 
+@cache
 def _tail_sum(power: int, first: int) -> float:
     """Sum of (n + 1/2)^-power over n >= first, Euler and Maclaurin at midpoints."""
     s, x = power, float(first)
@@ -104,15 +108,21 @@ def half_drive_margin(m: Medium) -> Values:
     return np.asarray(np.abs(inertia_and_drag(0.5, m) + ladder(0.5, 1, m, levels=depth(m))) - m.h)
 
 
-def stiffness_rises(m: Medium) -> Flags:
-    """Whether K grows with h here and its continued fraction has not passed a pole."""
+def stiffness_and_rise(m: Medium) -> tuple[Values, Flags]:
+    """K, and whether it grows with h here and its continued fraction has not passed a pole."""
+    squared, twice = m.h * m.h, -2.0 * m.h
     x: Complex = np.zeros(m.h.shape, dtype=np.complex128)
     slope = inner = x
-    for n in range(depth(m), 0, -1):
-        inner = inertia_and_drag(float(n), m) + x
-        inverse = 1.0 / inner
-        x, slope = -m.h * m.h * inverse, (-2.0 * m.h + m.h * m.h * inverse * slope) * inverse
-    return np.asarray((slope.real >= 0.0) & (inner.real < 0.0))
+    levels = depth(m)
+    rows = max(1, AT_ONCE // max(1, m.h.size))
+    for top in range(levels, 0, -rows):
+        for own in inertia_and_drag(np.arange(top, max(0, top - rows), -1.0)[:, None], m):
+            inner = own + x
+            inverse = 1.0 / inner
+            share = squared * inverse
+            slope = (twice + share * slope) * inverse
+            x = -share
+    return np.asarray(2.0 * x.real), np.asarray((slope.real >= 0.0) & (inner.real < 0.0))
 
 
 def drive_ceiling(b: Values) -> Values:
@@ -120,24 +130,51 @@ def drive_ceiling(b: Values) -> Values:
     return np.asarray(np.maximum(3.5, 1.1 * b))
 
 
-def classified(m: Medium) -> tuple[Codes, Values]:
-    """Regime codes by the half trace of the equivalent steady problem, and its `half_trace_share`.
+def on_branch(h: ArrayLike, b: ArrayLike, added_mass: ArrayLike = 0.0, history: ArrayLike = 0.0) -> Flags:
+    """Whether the drive is below that of greatest stiffness, on the branch that is read off.
 
-    UNSTABLE and PAST_MAXIMUM are those of the unsteady problem itself. The share is -1 above `STRONGEST_DRAG`.
+    dK/dh >= 0 and no pole of K passed: what |h| <= `stiffness_maximum` says, without the search
+
+    Parameters
+    ----------
+    h, b, added_mass, history : array_like
+        As in `motion.stiffness` [1].
+
+    Returns
+    -------
+    ndarray of bool
+        True on the branch.
     """
+    m, shape = medium(h, b, added_mass, history)
     with np.errstate(all="ignore"):
-        strength, drag = equivalent_steady(m)
-        moderate = drag <= STRONGEST_DRAG
-        bounded = strength < drive_ceiling(drag)
-        share = half_trace_share(np.where(bounded, strength, 0.0), np.where(moderate, drag, STRONGEST_DRAG))
-        share = np.where(moderate, share, -1.0)
-        inside = m._replace(h=np.where(bounded, m.h, 0.0))
-        rises = stiffness_rises(inside) & bounded
-        held = half_drive_margin(inside) > 0.0
-    codes = np.where(share <= 0.0, RELAXES, np.where(share >= 1.0, LOCKED, OSCILLATES))
-    codes = np.where(rises, codes, PAST_MAXIMUM)
-    codes = np.where(bounded & ~held, UNSTABLE, codes)
-    return codes.astype(np.int64), share
+        bounded, inside = _bounded(m)
+        return shaped(bounded & stiffness_and_rise(inside)[1], shape)
+
+
+def _bounded(m: Medium) -> tuple[Flags, Medium]:
+    """Elements below the ceiling of the first maximum of K, and all of them with no drive above it."""
+    strength, drag = equivalent_steady(m)
+    bounded = np.asarray(strength < drive_ceiling(drag))
+    return bounded, m if bounded.all() else m._replace(h=np.where(bounded, m.h, 0.0))
+
+
+def held(m: Medium) -> tuple[Codes, Values]:
+    """UNSTABLE or PAST_MAXIMUM where so, else OSCILLATES, not yet known; and K where it is one of the last two."""
+    with np.errstate(all="ignore"):
+        bounded, inside = _bounded(m)
+        stiff, rises = stiffness_and_rise(inside)
+        codes = np.where(bounded & rises, OSCILLATES, PAST_MAXIMUM)
+        codes = np.where(bounded & ~(half_drive_margin(inside) > 0.0), UNSTABLE, codes)
+    return codes, stiff
+
+
+def share_if_steady(h: Values, b: Values) -> Values:
+    """`half_trace_share` within its reach; -1 above `STRONGEST_DRAG`, where nothing on the branch oscillates."""
+    moderate = b <= STRONGEST_DRAG
+    if moderate.all():
+        return half_trace_share(h, b)
+    share = half_trace_share(np.where(moderate, h, 0.0), np.where(moderate, b, STRONGEST_DRAG))
+    return np.where(moderate, share, -1.0)
 
 
 def stiffness_maximum(b: ArrayLike, added_mass: ArrayLike = 0.0, history: ArrayLike = 0.0) -> Values:
@@ -161,7 +198,7 @@ def stiffness_maximum(b: ArrayLike, added_mass: ArrayLike = 0.0, history: ArrayL
     with np.errstate(all="ignore"):
         for _ in range(60):
             middle = 0.5 * (low + high)
-            rises = stiffness_rises(m._replace(h=middle))
+            rises = stiffness_and_rise(m._replace(h=middle))[1]
             low, high = np.where(rises, middle, low), np.where(rises, high, middle)
     return shaped(low, shape)
 
@@ -202,8 +239,8 @@ def stability_limit(b: ArrayLike, added_mass: ArrayLike = 0.0, history: ArrayLik
             low = np.where(np.isnan(high), probe, low)
         for _ in range(60):
             middle = 0.5 * (low + high)
-            held = _held(m._replace(h=middle))
-            low, high = np.where(held, middle, low), np.where(held, high, middle)
+            stays = _held(m._replace(h=middle))
+            low, high = np.where(stays, middle, low), np.where(stays, high, middle)
     return shaped(np.where(searched & ~np.isnan(high), low, np.nan), shape)
 
 

@@ -23,6 +23,8 @@ Indices = NDArray[np.intp]
 PRIVATE = ("ln_charge_to_mass", "ln_drag_rate", "height_origin", "charge_drift", "shape_deviation")
 LN_S, LN_GAMMA, ORIGIN, DRIFT, SHAPE = range(5)
 STEP = 1e-5  # of central differences in logarithms and in xi: truncation and rounding both near 1e-10
+SIGNED = ("stray_field", "offset_dc_voltage", "humidity", "latitude", "elevation", "finite_reynolds")
+LEAST = 0.02  # of its estimate, the least a positive input is tried at
 LOGS = ("balance", "height", "secular", "diameter")
 
 
@@ -107,6 +109,8 @@ def surroundings(setting: Setting, xi: Array) -> Surroundings:
         value = np.full(shape, one.quantity.estimate)
         if index in columns:
             value = value + one.quantity.u * xi[:, :, columns[index]]
+            if one.role not in SIGNED:  # a wild trial step must not ask for a negative density
+                value = np.maximum(value, LEAST * one.quantity.estimate)
         values[one.role] = value
     temperature, pressure = values["temperature"], values["pressure"]
     rho = air.density(temperature, pressure, values["humidity"]) * values["air_density_formula"]
@@ -380,4 +384,5 @@ def effective_u(log: Readings, prediction: Prediction) -> Array:
     """Standard uncertainty of a reading with that of its dc voltage carried along the slope (effective variance)."""
     if prediction.slope is None:
         return log.u
-    return np.hypot(log.u, np.where(log.u_voltage > 0.0, prediction.slope * log.u_voltage, 0.0))
+    along = np.where((log.u_voltage > 0.0) & np.isfinite(prediction.slope), prediction.slope * log.u_voltage, 0.0)
+    return np.hypot(log.u, along)

@@ -24,10 +24,11 @@ from reduction.floquet import (
     REGIME_REASONS,
     RELAXES,
     UNSTABLE,
+    on_branch,
     stability_limit,
     stiffness_maximum,
 )
-from reduction.recurrence import Complex, Medium, Values, depth, inertia_and_drag, ladder, medium, shaped
+from reduction.recurrence import AT_ONCE, Complex, Medium, Values, depth, inertia_and_drag, ladder, medium, shaped
 from reduction.resonance import response_peak
 from reduction.secular import drag_free_frequency, regime, ring_down
 
@@ -42,6 +43,7 @@ __all__ = [
     "drag_free_frequency",
     "micromotion_ratio",
     "micromotion_speed",
+    "on_branch",
     "regime",
     "response",
     "response_peak",
@@ -130,53 +132,54 @@ def streak_factor(h: ArrayLike, b: ArrayLike, added_mass: ArrayLike = 0.0, histo
         Factor [1], about 1.01 to 1.05 in practice.
     """
     m, shape = medium(h, b, added_mass, history)
+    parts = [_streak_middle(m.take(slice(k, k + AT_ONCE // 8))) for k in range(0, m.h.size, AT_ONCE // 8)]
+    return shaped(np.concatenate(parts) if parts else m.h, shape)
+
+
+def _streak_middle(m: Medium) -> Values:
     levels = depth(m)
     with np.errstate(all="ignore"):
-        ratios = np.empty((levels + 1, m.h.size), dtype=np.complex128)
         ratio: Complex = np.zeros(m.h.size, dtype=np.complex128)
-        for n in range(levels, 0, -1):
-            ratio = -m.h / (inertia_and_drag(float(n), m) + m.h * ratio)
-            ratios[n] = ratio
-        ratios[0] = 1.0
-        harmonics: Complex = np.cumprod(ratios, axis=0, dtype=np.complex128)
-        harmonics[1:] *= 2.0
+        ratios = [ratio] * levels
+        for n, own in enumerate(inertia_and_drag(np.arange(levels, 0.0, -1.0)[:, None], m), start=1):
+            ratio = -m.h / (own + m.h * ratio)
+            ratios[levels - n] = ratio
+        harmonics: Complex = 2.0 * np.cumprod(ratios, axis=0, dtype=np.complex128)
         harmonics = harmonics[: _worth_keeping(harmonics)]
-        return shaped(0.5 * (_extreme(harmonics, 1.0) - _extreme(harmonics, -1.0)), shape)
+        return 1.0 + _middle_of_range(harmonics)
 
 
 def _worth_keeping(harmonics: Complex) -> int:
     size = np.max(np.abs(harmonics), axis=1, initial=0.0, where=np.isfinite(harmonics))
-    return max(2, int(np.max(np.nonzero(size > 1e-18)[0], initial=1)) + 1)
+    return max(1, int(np.max(np.nonzero(size > 1e-18)[0], initial=0)) + 1)
 
 
-def _extreme(harmonics: Complex, sign: float) -> Values:
-    """Greatest value over the cycle of sign times the motion: the best of a grid, sharpened by Newton's method."""
-    count = harmonics.shape[0]
-    points = max(32, 1 << (3 * count).bit_length())
-    coarse = np.fft.irfft(np.conj(harmonics) * _halved(count), n=points, axis=0) * (points * sign)
-    angle = -2.0 * np.pi / points * np.argmax(coarse, axis=0)
-    orders = np.arange(count)
-    value = np.zeros(angle.shape)
-    for step in range(4):
-        turn = np.exp(1j * angle)
-        motion = np.zeros_like(turn)
-        slope = np.zeros_like(turn)
-        bend = np.zeros_like(turn)
-        for n in orders[::-1]:
-            motion = motion * turn + harmonics[n]
-            slope = slope * turn + 1j * n * harmonics[n]
-            bend = bend * turn - n * n * harmonics[n]
-        value = sign * motion.real
-        if step < 3:
-            down = sign * bend.real
-            angle = angle - np.where(down < 0.0, sign * slope.real / np.where(down < 0.0, down, -1.0), 0.0)
-    return value
+def _middle_of_range(harmonics: Complex) -> Values:
+    """(max + min) / 2 over the cycle of Re sum_n c_n exp(i n theta), n from 1: best of a grid, sharpened by Newton."""
+    count = len(harmonics)
+    points = max(32, 1 << (3 * count + 3).bit_length())
+    padded = np.zeros((count + 1, harmonics.shape[1]), dtype=np.complex128)
+    padded[1:] = harmonics
+    coarse = np.fft.irfft(np.conj(padded), n=points, axis=0)
+    angle = -2.0 * np.pi / points * np.stack((np.argmax(coarse, axis=0), np.argmin(coarse, axis=0)))
+    sides = np.array([[1.0], [-1.0]])
+    turning = 1j * np.arange(1.0, count + 1.0)[:, None]
+    with_slopes = np.stack((harmonics, turning * harmonics, turning * turning * harmonics), axis=1)[:, :, None]
+    for _ in range(3):
+        motion = _summed(with_slopes, angle)
+        bend = sides * motion[2].real
+        angle = angle - np.where(bend < 0.0, sides * motion[1].real / np.where(bend < 0.0, bend, -1.0), 0.0)
+    ends = _summed(with_slopes[:, 0], angle).real
+    return np.asarray(0.5 * (ends[0] + ends[1]))
 
 
-def _halved(count: int) -> Values:
-    weights = np.full((count, 1), 0.5)
-    weights[0] = 1.0
-    return weights
+def _summed(rows: Complex, angle: Values) -> Complex:
+    """Sum of rows times exp(i n angle), n from 1."""
+    turn = np.exp(1j * angle)
+    total: Complex = rows[-1] * turn
+    for row in rows[-2::-1]:
+        total = (total + row) * turn
+    return total
 
 
 def response(

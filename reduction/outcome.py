@@ -16,6 +16,7 @@ from reduction.methods import Array, Flags, Indices
 from reduction.preparation import Prepared
 from reduction.settings import Campaign, Session
 from reduction.solution import Reduced, is_determined
+from reduction.strain import Strain, strain_of
 
 S, GAMMA, DIAMETER, MASS, CHARGE, DENSITY = range(6)  # places of the results, in the order of budget.RESULTS
 
@@ -41,6 +42,7 @@ class Outcome:
     sized: Flags  # (N,), diameter
     reading_words: dict[tuple[str, int], list[str]] = field(default_factory=dict)  # log and row: flags
     flagged: list[list[object]] = field(default_factory=list)  # log, line, particle, text
+    strain: Strain | None = None  # of the session adjusted together
 
     def known(self, place: int) -> list[bool]:
         """Which of the results of one row of the adjustment are determined."""
@@ -54,6 +56,7 @@ def outcome_of(
 ) -> Outcome:
     """Results, degrees of freedom and intervals of the `chosen` particles, as they were adjusted."""
     prepared, options = reduced.prepared, campaign.options
+    names = [prepared.names[index] for index in chosen]
     alone = options.adjust == "particle" or adjusted is reduced.alone
     size = own_sizes(prepared, chosen) if options.mass_from == "diameter" else None
     results = results_of(adjusted, alone=alone, size=size)
@@ -68,7 +71,7 @@ def outcome_of(
         reduced,
         adjusted,
         {int(index): place for place, index in enumerate(chosen)},
-        tuple(prepared.names[index] for index in chosen),
+        tuple(names),
         alone,
         results,
         dof,
@@ -76,6 +79,7 @@ def outcome_of(
         high,
         sure,
         sure[:, 1] if size is None else np.isfinite(size.u),
+        strain=None if alone else strain_of(adjusted, names, leave_one_out=options.adjust == "session"),
     )
 
 

@@ -13,6 +13,7 @@ from reduction.logs import Logs
 from reduction.methods import Array, Readings, Setting, uncertain_inputs
 from reduction.settings import Campaign, Session
 
+EXACT = 1e-6  # relative u that stands in for none, small beside any other
 OBSERVED = {"balance": "balance_voltage", "height": "height", "secular": "secular_frequency"}
 
 
@@ -32,7 +33,6 @@ class Prepared:
     setting: Setting
     logs: dict[str, Readings]
     unstated: dict[str, NDArray[np.bool_]]
-    neighbours: NDArray[np.bool_]
 
 
 def prepare(campaign: Campaign, session: Session, logs: Logs) -> Prepared:
@@ -78,17 +78,7 @@ def prepare(campaign: Campaign, session: Session, logs: Logs) -> Prepared:
     if len(sizes):
         readings["diameter"] = sizes
         unstated["diameter"] = np.zeros(len(sizes), bool)
-    return Prepared(
-        names,
-        species,
-        charged_with,
-        excluded,
-        tuple(left_out),
-        setting,
-        readings,
-        unstated,
-        _with_neighbours(logs, names),
-    )
+    return Prepared(names, species, charged_with, excluded, tuple(left_out), setting, readings, unstated)
 
 
 def _details(table: pd.DataFrame | None) -> dict[str, dict[str, object]]:
@@ -162,6 +152,8 @@ def _diameters(
     for index, (name, kind) in enumerate(zip(names, species, strict=True)):
         own = details.get(name, {})
         diameter, u = (float(own.get(key, np.nan)) for key in ("diameter", "u_diameter"))  # type: ignore[arg-type]
+        if np.isfinite(diameter) and not np.isfinite(u):
+            u = EXACT * diameter  # a diameter stated without u counts as exact
         lot = campaign.species[kind]
         if lot.density is None:
             continue
@@ -184,15 +176,6 @@ def _diameters(
         np.full(count, -1, dtype=np.intp),
         empty,
     )
-
-
-def _with_neighbours(logs: Logs, names: tuple[str, ...]) -> NDArray[np.bool_]:
-    """Particles that were not alone in the trap while their balance was read."""
-    if "balance" not in logs.tables:
-        return np.zeros(len(names), bool)
-    used = _used(logs.tables["balance"], names)
-    crowded = set(used.loc[used["particles_in_trap"] > 1, "particle"])
-    return np.array([name in crowded for name in names], dtype=bool)
 
 
 def with_u(readings: Readings, u: Array) -> Readings:

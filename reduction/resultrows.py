@@ -6,6 +6,7 @@ import math
 from collections.abc import Iterator, Mapping
 from typing import Any
 
+from reduction.agreement import MethodEstimate
 from reduction.agreement import agreement_rows as pairs_of
 from reduction.charge import air_limit_ratio, electrons
 from reduction.flags import joined
@@ -148,10 +149,31 @@ def _method_row(outcome: Outcome, index: int, name: str, method: str) -> dict[st
         }
     if estimate.known[1]:
         row |= {"drag_rate_per_s": estimate.value[1], "u_drag_rate_per_s": u[1]}
+    row["normalized_residual"] = _normalized_residual(outcome, index, estimate)
     if method == "height" and fit.status == "ok":
         row["height_origin_mm"] = fit.theta[ORIGIN] * 1e3
         row["u_height_origin_mm"] = estimate.u_origin * 1e3
     return row
+
+
+def _normalized_residual(outcome: Outcome, index: int, estimate: MethodEstimate) -> float:
+    """(method - adjusted) / sqrt(u_method^2 - u_adjusted^2) in logarithms, of q/m, else of the drag rate.
+
+    The method is part of the adjustment, so its variance less the adjusted one is that of the difference. Where the
+    method alone fixes the adjusted value the difference says nothing.
+    """
+    if index not in outcome.place or status_of(outcome, index) != "ok":
+        return math.nan
+    place = outcome.place[index]
+    for quantity, result in ((0, S), (1, GAMMA)):
+        if estimate.known[quantity] and outcome.known(place)[result]:
+            own = float(estimate.u[quantity] / abs(estimate.value[quantity]))
+            variance = own**2 - float(outcome.results.variance[place, result])
+            if variance < 0.02 * own**2:
+                return math.nan
+            difference = math.log(abs(float(estimate.value[quantity] / outcome.results.value[place, result])))
+            return difference / math.sqrt(variance)
+    return math.nan
 
 
 def _adjusted_row(outcome: Outcome, index: int, name: str) -> dict[str, Any]:
@@ -198,6 +220,11 @@ def agreement_rows(outcome: Outcome) -> Iterator[dict[str, Any]]:
 def input_rows(outcome: Outcome) -> Iterator[dict[str, Any]]:
     """Rows of inputs.csv: prior and, where the readings of several particles were adjusted together, posterior."""
     adjusted = adjusted_inputs(outcome)
+    pulls: dict[str, float] = {}
+    if outcome.strain is not None:
+        setting = outcome.adjusted.model.setting
+        named = (setting.inputs[index].name for index in setting.uncertain)
+        pulls = dict(zip(named, outcome.strain.pulls.tolist(), strict=True))
     for one in outcome.prepared.setting.inputs:
         estimate, u = adjusted.get(one.name, (math.nan, math.nan))
         yield {
@@ -210,6 +237,7 @@ def input_rows(outcome: Outcome) -> Iterator[dict[str, Any]]:
             "shape": one.quantity.shape if one.quantity.u else "exact",
             "adjusted_estimate": estimate,
             "adjusted_u": u,
+            "pull": pulls.get(one.name, math.nan),
         }
 
 

@@ -47,7 +47,8 @@ def check_folders(campaign: Path, results: Path) -> None:
             f"campaign={campaign}: there is no such folder. Give the folder that holds campaign.yaml and sessions/."
         )
         raise ResultsError(message)
-    if results == campaign or campaign in results.parents and results.parent.name in ("sessions", "traps", "species"):
+    inside = results.relative_to(campaign).parts[:1] if campaign in results.parents else ()
+    if results == campaign or inside in [("sessions",), ("traps",), ("species",), ("marking",)]:
         message = f"results={results}: this folder belongs to the campaign. Give a folder of its own."
         raise ResultsError(message)
 

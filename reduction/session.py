@@ -15,6 +15,7 @@ from reduction.preparation import prepare
 from reduction.readingrows import flag_readings, reading_rows
 from reduction.records import SessionRecord
 from reduction.resultrows import agreement_rows, input_rows, method_rows, particle_rows
+from reduction.sanity import notes_of
 from reduction.sessionfacts import facts
 from reduction.settings import Campaign
 from reduction.solution import Reduced, adjust_session, fit_session
@@ -88,6 +89,9 @@ def _solved(campaign: Campaign, session_id: str, logs: Logs) -> Reduced:
 def record_of(outcome: Outcome) -> SessionRecord:
     """Tables and facts of one reduced session."""
     flag_readings(outcome)
+    notes = list(notes_of(outcome))
+    for index, word, _ in notes:
+        outcome.reduced.flags[index].add(word)
     names, session, pooled = list(outcome.names), outcome.session.id, outcome.campaign.options.adjust == "campaign"
     components = budget.component_rows(outcome.results, session, names, pooled=pooled)
     budgets = budget.budget_rows(outcome.results, session, names, outcome.reduced.scatter)
@@ -101,7 +105,7 @@ def record_of(outcome: Outcome) -> SessionRecord:
         "readings": list(reading_rows(outcome)),
     }
     frames = {name: pd.DataFrame(rows, columns=list(COLUMNS[name])) for name, rows in tables.items()}
-    return SessionRecord(frames, facts(outcome))
+    return SessionRecord(frames, facts(outcome, notes))
 
 
 def _reported(outcome: Outcome, rows: Iterator[dict[str, object]]) -> Iterator[dict[str, object]]:

@@ -17,7 +17,7 @@ from reduction.resultrows import adjusted_inputs
 from reduction.solution import is_determined
 
 
-def facts(outcome: Outcome) -> dict[str, Any]:
+def facts(outcome: Outcome, sanity: list[tuple[int, str, str]]) -> dict[str, Any]:
     """Content of session.json: what the report tells beside the tables."""
     session, air, site = outcome.session, outcome.session.air, outcome.session.site
     stray = next(one for one in outcome.prepared.setting.inputs if one.role == "stray_field")
@@ -65,7 +65,9 @@ def facts(outcome: Outcome) -> dict[str, Any]:
         "left_out": [[log, line, name, reason] for log, line, name, reason in outcome.prepared.left_out]
         + [["particles", 0, name, reason] for name, reason in sorted(outcome.prepared.excluded.items())],
         "flagged": outcome.flagged,
-        "notes": _notes(outcome),
+        "notes": _notes(outcome, sanity),
+        "strain": _strain(outcome),
+        "dc_polarity": outcome.prepared.setting.polarity,
         "extra_columns": {log: list(names) for log, names in sorted(outcome.logs.extra_columns.items()) if names},
         "dialects": dict(sorted(outcome.logs.dialects.items())),
         "scatter_dof": {log: dof for log, dof in sorted(outcome.reduced.scatter.items())},
@@ -85,7 +87,7 @@ def facts(outcome: Outcome) -> dict[str, Any]:
     }
 
 
-def _notes(outcome: Outcome) -> list[str]:
+def _notes(outcome: Outcome, sanity: list[tuple[int, str, str]]) -> list[str]:
     notes = []
     for log, dof in sorted(outcome.reduced.scatter.items()):
         notes.append(
@@ -95,7 +97,25 @@ def _notes(outcome: Outcome) -> list[str]:
     for index, reason in enumerate(outcome.reduced.reasons):
         if reason:
             notes.append(f"Particle {outcome.prepared.names[index]}: {reason}.")
+    names = outcome.prepared.names
+    notes += [f"Particle {names[slip.particle]}: {slip.text}." for slip in outcome.reduced.slips]
+    notes += [f"Particle {names[index]}: {text}." for index, _, text in sanity]
     return notes
+
+
+def _strain(outcome: Outcome) -> dict[str, Any] | None:
+    """Chi-square of the adjustment and what strains it, for a session adjusted together."""
+    strain = outcome.strain
+    if strain is None:
+        return None
+    return {
+        "chi_square": strain.chi_square,
+        "degrees_of_freedom": strain.dof,
+        "p": strain.p if strain.dof > 0 else None,
+        "strains_most": outcome.names[strain.strains_most] if strain.strains_most >= 0 else None,
+        "others_move_u": strain.others_move if np.isfinite(strain.others_move) else None,
+        "sentences": list(strain.sentences),
+    }
 
 
 def _masses(outcome: Outcome) -> dict[str, list[dict[str, Any]]]:

@@ -26,6 +26,7 @@ from reduction.methods import (
     with_reynolds,
 )
 from reduction.preparation import Prepared, with_u
+from reduction.slips import Slip, slips_of
 from reduction.starts import Start, starts_of
 
 OUTLIER = 4.0  # standard deviations from its method's fit beyond which a reading is flagged
@@ -48,6 +49,7 @@ class Reduced:
     dof: Indices  # of each particle adjusted alone
     open: Flags  # particles with no single solution, left to themselves
     reasons: list[str]
+    slips: list[Slip]
 
 
 def _provisional(readings: Mapping[str, Readings], unstated: Mapping[str, Flags]) -> dict[str, Readings]:
@@ -93,11 +95,12 @@ def fit_session(prepared: Prepared, scatter_policy: str) -> Reduced:
             flags[index].add("chi_square")
         if drifting[index]:
             flags[index].add("charge_drift")
-        if prepared.neighbours[index]:
-            flags[index].add("neighbours")
         if not prepared.setting.has_density[index]:
             flags[index].add("no_density")
-    return Reduced(prepared, alone.model, starts, fits, scatter, flags, alone, estimates, dof, is_open, reasons)
+    slips = [] if scatter else slips_of(alone, dof, theta)
+    for slip in slips:
+        flags[slip.particle].add("factor_suspected")
+    return Reduced(prepared, alone.model, starts, fits, scatter, flags, alone, estimates, dof, is_open, reasons, slips)
 
 
 def _no_drift(model: Model) -> Model:

@@ -3,23 +3,20 @@
 from __future__ import annotations
 
 import argparse
-import csv
-import io
 import logging
 import shutil
 import sys
 import traceback
 from collections.abc import Sequence
-from dataclasses import asdict
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 from reduction import digests, resultsfolder
 from reduction.batches import STATE, Plan, make_plan, record_folder
 from reduction.errors import Faults, InputError, ReductionError, ResultsError
-from reduction.records import FACTS, PIECES, SessionRecord
+from reduction.records import FACTS, SessionRecord
 from reduction.rundiff import FILES
-from reduction.wholefile import read_json, whole_file, write_json, write_whole
+from reduction.wholefile import read_json, whole_file, write_json
 
 if TYPE_CHECKING:
     from reduction.settings import Campaign
@@ -197,90 +194,40 @@ def _draw(results: Path, made: Plan, session: str) -> None:
 
 def tables(campaign: Path, results: Path) -> None:
     """Put the campaign's tables together from the records, and state what they were made from."""
-    from reduction.tables import COLUMNS
+    from reduction.assembly import gather, run_statement
 
     made = Plan.load(results)
     folders = dict(made.records(results))
-    for piece in PIECES:
-        head = (",".join(COLUMNS[piece]) + "\n").encode()
-        if piece == "readings":
-            (results / piece).mkdir(exist_ok=True)
-            for name, folder in folders.items():
-                _gather(results / piece / f"{name}.csv", head, [folder / f"{piece}.csv"])
-        else:
-            pieces = [folder / f"{piece}.csv" for folder in folders.values()]
-            if piece == "inputs":
-                _gather_inputs(results / f"{piece}.csv", COLUMNS[piece], pieces)
-            else:
-                _gather(results / f"{piece}.csv", head, pieces)
-    write_json(results / "run.json", run_statement(campaign, results, made))
+    gather(list(folders.values()), results)
+    settings = _campaign(campaign, [])
+    write_json(results / "run.json", run_statement(settings, made, results))
     tell(f"tables: {len(folders)} sessions")
 
 
-def _gather(path: Path, head: bytes, pieces: Sequence[Path]) -> None:
-    """Write one table from pieces with the same head."""
-    with whole_file(path) as out:
-        out.write(head)
-        for piece in pieces:
-            with open(piece, "rb") as handle:
-                if handle.readline() != head:
-                    message = f"the record {piece.parent} is not one of this program. Remove {STATE} from the results."
-                    raise ResultsError(message)
-                shutil.copyfileobj(handle, out)
-
-
-def _gather_inputs(path: Path, columns: Sequence[str], pieces: Sequence[Path]) -> None:
-    """Write one row for each shared input; where sessions adjusted it apart, it has no one adjusted value."""
-    adjusted = columns.index("adjusted_estimate")
-    rows: dict[tuple[str, ...], tuple[str, ...]] = {}
-    for piece in pieces:
-        with open(piece, encoding="utf-8", newline="") as handle:
-            for row in list(csv.reader(handle))[1:]:
-                key, value = tuple(row[:adjusted]), tuple(row[adjusted:])
-                rows[key] = value if rows.get(key, value) == value else ("",) * len(value)
-    text = io.StringIO()
-    writer = csv.writer(text, lineterminator="\n")
-    writer.writerow(columns)
-    writer.writerows((*key, *value) for key, value in sorted(rows.items()))
-    write_whole(path, text.getvalue().encode())
-
-
-def run_statement(campaign: Path, results: Path, made: Plan) -> dict[str, Any]:
-    """Content of run.json: what the results were made from, and nothing of when, where or by whom."""
-    settings = _campaign(campaign, [])
-    facts = {name: read_json(folder / FACTS) for name, folder in made.records(results)}
-    left = {str(name): str(reason) for name, reason in settings.leave_out.items()}
-    left |= {name: str(fact["reason"]) for name, fact in facts.items() if fact["status"] == "left_out"}
-    options = asdict(settings.options)
-    options.pop("when_a_session_fails")
-    return {
-        "digest": made.campaign,
-        "inputs": digests.input_digests(campaign),
-        "left_out": left,
-        "package": digests.package_digest(),
-        "seed": options["seed"],
-        "sessions": {
-            name: {"digest": made.record_name(name), "status": fact["status"]} for name, fact in facts.items()
-        },
-        "settings": options,
-        "versions": dict(digests.versions()),
-    }
-
-
 def report(results: Path) -> None:
-    """Draw the campaign's report and lay the sessions' reports beside it."""
+    """Draw the campaign's report."""
     from reduction.report import campaign_pdf
 
     made = Plan.load(results)
-    (results / "sessions").mkdir(exist_ok=True)
-    for name in sorted(made.sessions):
-        page = resultsfolder.page(results, name, made.page_name(name))
-        if not page.is_file():
-            _draw(results, made, name)
-        with whole_file(results / "sessions" / f"{name}.pdf") as out, open(page, "rb") as handle:
-            shutil.copyfileobj(handle, out)
     campaign_pdf(results, dict(made.records(results)), results / "report.pdf", digest=made.campaign)
     tell(f"report: {len(made.sessions)} sessions")
+
+
+def session_files(results: Path) -> None:
+    """Lay each session's readings and report beside the campaign's."""
+    made = Plan.load(results)
+    for folder in ("readings", "sessions"):
+        (results / folder).mkdir(exist_ok=True)
+    for name, record in made.records(results):
+        page = resultsfolder.page(results, name, made.page_name(name))
+        _copy(record / "readings.csv", results / "readings" / f"{name}.csv")
+        _copy(page, results / "sessions" / f"{name}.pdf")
+    tell(f"session_files: {len(made.sessions)} sessions")
+
+
+def _copy(source: Path, target: Path) -> None:
+    with whole_file(target) as out, open(source, "rb") as handle:
+        shutil.copyfileobj(handle, out)
 
 
 def tidy(results: Path) -> None:
@@ -289,8 +236,7 @@ def tidy(results: Path) -> None:
     last = results / STATE / "last"
     last.mkdir(exist_ok=True)
     for name in FILES:
-        with whole_file(last / name) as out, open(results / name, "rb") as handle:
-            shutil.copyfileobj(handle, out)
+        _copy(results / name, last / name)
     write_json(results / STATE / "tidied.json", {"digest": Plan.load(results).campaign})
     tell("tidy: done")
 
@@ -308,7 +254,8 @@ def _span(names: Sequence[str]) -> str:
 def _arguments(argv: Sequence[str] | None) -> argparse.Namespace:
     parser = argparse.ArgumentParser(prog="python -m reduction.steps", description=__doc__)
     parser.add_argument(
-        "step", choices=["plan", "check", "reduce", "adjust", "session_reports", "tables", "report", "tidy"]
+        "step",
+        choices=["plan", "check", "reduce", "adjust", "session_reports", "tables", "report", "session_files", "tidy"],
     )
     parser.add_argument("--campaign", type=Path, help="folder that holds campaign.yaml and sessions/")
     parser.add_argument("--results", type=Path, default=Path(), help="folder of the results (here)")

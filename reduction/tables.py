@@ -25,10 +25,10 @@ COLUMNS: dict[str, tuple[str, ...]] = {
             charge_drift_per_s u_charge_drift_per_s""",
         "methods": """session particle method status reason charge_to_mass_C_per_kg u_charge_to_mass_C_per_kg
             u_random_charge_to_mass_C_per_kg drag_rate_per_s u_drag_rate_per_s height_origin_mm u_height_origin_mm
-            readings chi_square degrees_of_freedom""",
+            readings chi_square degrees_of_freedom normalized_residual""",
         "agreement": """session particle method_a method_b quantity difference u_difference unit
             normalized_error""",
-        "inputs": "input scope owner estimate u unit shape adjusted_estimate adjusted_u",
+        "inputs": "input scope owner estimate u unit shape adjusted_estimate adjusted_u pull",
         "components": "session particle result input scope component unit",
         "budget": "session particle result input estimate u shape evaluation sensitivity component share",
         "comparison": """group sessions particles mean u_mean low high unit between_sessions

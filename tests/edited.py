@@ -50,10 +50,14 @@ class Edited:
 
     folder: Path
 
+    def read(self, name: str) -> dict[str, Any]:
+        """Content of a YAML file."""
+        content = yaml.safe_load((self.folder / f"{name}.yaml").read_text(encoding="utf-8"))
+        return dict(content or {})
+
     def yaml(self, name: str, **changes: Any) -> Edited:
         """Set keys of a YAML file; None takes a key away, a mapping sets the keys below one."""
-        path = self.folder / f"{name}.yaml"
-        content = yaml.safe_load(path.read_text(encoding="utf-8")) or {}
+        path, content = self.folder / f"{name}.yaml", self.read(name)
         for key, value in changes.items():
             if value is None:
                 content.pop(key, None)
@@ -74,13 +78,14 @@ class Edited:
 
     def trap(self, **changes: Any) -> Edited:
         """Set keys of the only trap's file."""
-        return self.yaml(f"traps/{self._only('traps')}", **changes)
+        return self.yaml(f"traps/{self.only_name('traps')}", **changes)
 
     def species(self, **changes: Any) -> Edited:
         """Set keys of the only species' file."""
-        return self.yaml(f"species/{self._only('species')}", **changes)
+        return self.yaml(f"species/{self.only_name('species')}", **changes)
 
-    def _only(self, folder: str) -> str:
+    def only_name(self, folder: str) -> str:
+        """Name of the only trap or species."""
         (path,) = (self.folder / folder).glob("*.yaml")
         return path.stem
 

@@ -115,15 +115,16 @@ def campaign_pdf(results, records, out, *, digest):
 }
 
 
-def checkout(folder: Path) -> Path:
-    """Copy the workflow and the package to `folder`, with the stand-ins in place of the physics."""
+def checkout(folder: Path, *, real: bool = False) -> Path:
+    """Copy the workflow and the package to `folder`, with the stand-ins in place of the physics unless it is `real`."""
     shutil.copytree(ROOT / "workflow", folder / "workflow")
     shutil.copytree(ROOT / "reduction", folder / "reduction", ignore=shutil.ignore_patterns("__pycache__"))
-    shutil.copy(ROOT / "Snakefile", folder)
+    for name in ("Snakefile", "pyproject.toml"):
+        shutil.copy(ROOT / name, folder)
     metadata = folder / "motescale-0.dist-info" / "METADATA"  # this copy counts as the installed one
     metadata.parent.mkdir()
     metadata.write_text("Metadata-Version: 2.1\nName: motescale\nVersion: 0\n")
-    for name, text in MODULES.items():
+    for name, text in MODULES.items() if not real else ():
         (folder / "reduction" / f"{name}.py").write_text(text)
     return folder
 

@@ -66,7 +66,7 @@ def test_check_of_the_example_tells_how_its_files_are_read(capsys: pytest.Captur
     [
         (["check", "nowhere"], "no folder nowhere"),
         (["run", "nowhere", "out"], "there is no such folder"),
-        (["session", "nowhere", "s1"], "nowhere"),
+        (["session", "nowhere", "s1"], "expected a campaign folder"),
         (["explain", "nowhere", "s1", "p1"], "nowhere"),
         (["simulate", "sim", "--plan", "room_air_lihgt"], "Did you mean room_air_light?"),
         (["simulate", "sim", "--sessions", "0"], "at least one"),
@@ -96,8 +96,8 @@ def test_new_campaign_and_session_are_written_and_not_overwritten(
 ) -> None:
     folder = tmp_path / "my campaign"
     assert main(["new", str(folder)]) == 0
-    assert main(["session", str(folder), "b2", "--like", "session-1"]) in (0, 1)
-    assert (folder / "campaign.yaml").is_file()
+    assert main(["session", str(folder), "b2", "--like", "s001"]) == 0
+    assert (folder / "sessions" / "b2" / "session.yaml").is_file()
     capsys.readouterr()
     assert main(["new", str(folder)]) == 1
     assert "Traceback" not in capsys.readouterr().err

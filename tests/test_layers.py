@@ -19,12 +19,15 @@ errors places wholefile units flags
 textfile contract yamlfile quantity entries logged sessionfile csvfile heads wording
 air gravity drag recurrence floquet secular resonance motion
 settings schemas logs check newcampaign
-inputs methods fits adjustment charge starts budget agreement preparation solution outcome groups
-tables records resultrows readingrows curves sessionfacts session
+inputs methods fits adjustment charge starts budget agreement preparation slips solution strain outcome window sanity
+shapes streams noise propagation refits montecarlo validation
+tables multiplicity randomeffects sessionmeans groupmeans pairs ranks transitivity trends comparison
+groups intrinsic histogram planning comparisonwords
+records resultrows readingrows curves sessionfacts session
 simulationplan simulationtruth simulationreadings simulationfiles simulationexample simulation
 typeset sheets figurestyle panels figures campaignfigures sessiontables campaigntables sessionreport campaignreport
 report findings equations explain
-digests batches resultsfolder rundiff steps running command
+digests batches resultsfolder rundiff assembly steps running command
 """
 ORDER = _ORDER.split()
 
@@ -61,6 +64,7 @@ def test_every_module_has_its_place_in_the_order() -> None:
 
 @pytest.mark.parametrize("path", modules(), ids=lambda path: path.stem)
 def test_module_imports_from_modules_above_it_only(path: Path) -> None:
+    assert path.stem in ORDER, "give it a place in ORDER, above all that import it"
     own = [name.split(".")[1] for name in imports(path) if name.startswith("reduction.")]
     below = [name for name in own if ORDER.index(name) >= ORDER.index(path.stem)]
     assert not below

@@ -172,4 +172,4 @@ def test_units_of_one_kind_are_listed():
 
 
 def test_the_examples_in_the_docstrings_hold():
-    assert doctest.testmod(reduction.units) == (0, 5)
+    assert doctest.testmod(reduction.units) == (0, 4)

@@ -6,6 +6,7 @@ contract; there is no published source for it.
 
 from __future__ import annotations
 
+import csv
 import json
 import os
 import shutil
@@ -16,6 +17,8 @@ from pathlib import Path
 
 import pytest
 from standin import ROOT, Bench, add_session, campaign, checkout, contents
+
+from reduction.tables import COLUMNS
 
 pytestmark = pytest.mark.workflow
 
@@ -357,39 +360,60 @@ def test_lint_remarks_on_nothing_but_environments(bench: Bench) -> None:
     )  # fmt: skip
     remarks = [line.strip() for line in (ran.stdout + ran.stderr).splitlines() if line.startswith("    * ")]
     # the environment is the one the program is installed in, pinned by requirements.lock
-    assert remarks == 6 * ["* Specify a conda environment or container for each rule.:"]
+    assert remarks == 7 * ["* Specify a conda environment or container for each rule.:"]
 
 
 @pytest.fixture(scope="module")
-def example(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    """Results of the example, computed by the real program."""
-    results = tmp_path_factory.mktemp("example") / "results"
-    command = [sys.executable, "-m", "snakemake", "--snakefile", str(ROOT / "Snakefile"), "--cores", "2"]
-    ran = subprocess.run(
-        [*command, "--config", f"results={results}"], capture_output=True, text=True, check=False, cwd=results.parent
-    )
-    assert ran.returncode == 0, ran.stdout + ran.stderr
-    return results
+def example(tmp_path_factory: pytest.TempPathFactory) -> Bench:
+    """Results of the example, computed by a copy of the real program."""
+    folder = tmp_path_factory.mktemp("example")
+    program = checkout(folder / "program", real=True)
+    shutil.copytree(ROOT / "data_example", program / "data_example")
+    bench = Bench(program, program / "data_example", folder / "results")
+    good(bench.run())
+    return bench
 
 
-def test_example_runs_to_its_reports(example: Path) -> None:
+def test_example_runs_to_its_reports(example: Bench) -> None:
     sessions = sorted(path.name for path in (ROOT / "data_example" / "sessions").iterdir())
-    assert sorted(path.stem for path in (example / "sessions").glob("*.pdf")) == sessions
-    assert sorted(path.stem for path in (example / "readings").glob("*.csv")) == sessions
-    for path in [example / "report.pdf", *(example / "sessions").glob("*.pdf")]:
+    results = example.results
+    assert sorted(path.stem for path in (results / "sessions").glob("*.pdf")) == sessions
+    assert sorted(path.stem for path in (results / "readings").glob("*.csv")) == sessions
+    for path in [results / "report.pdf", *(results / "sessions").glob("*.pdf")]:
         assert path.read_bytes().startswith(b"%PDF-")
-    assert all((example / name).stat().st_size > 0 for name in TABLES)
+    for name in TABLES:
+        head, *rows = (results / name).read_text().splitlines()
+        assert head == ",".join(COLUMNS[name.removesuffix(".csv")])
+        assert rows
 
 
-def test_example_gives_the_same_bytes_again_and_names_no_place_or_person(example: Path) -> None:
-    other = example.with_name("again")
-    ran = subprocess.run(
-        [sys.executable, "-m", "reduction.command", "run", str(ROOT / "data_example"), str(other), "--cores", "1"],
-        capture_output=True, text=True, check=False, cwd=ROOT, env={**os.environ, "TZ": "Asia/Tokyo", "LC_ALL": "C"},
-    )  # fmt: skip
-    assert ran.returncode == 0, ran.stdout + ran.stderr
-    first, second = contents(example), contents(other)
-    assert first == second
-    told = [str(example).encode(), str(ROOT).encode(), os.uname().nodename.encode(), str(Path.home()).encode() + b"/"]
+def test_example_has_one_row_for_each_shared_input(example: Bench) -> None:
+    with open(example.results / "inputs.csv", encoding="utf-8", newline="") as handle:
+        names = [row["input"] for row in csv.DictReader(handle)]
+    assert len(names) == len(set(names))
+
+
+def test_example_gives_the_same_bytes_again_and_names_no_place_or_person(example: Bench) -> None:
+    other = example.results.with_name("again")
+    moved = shutil.copytree(example.campaign, example.results.with_name("moved"))
+    command = [sys.executable, "-m", "reduction.command", "run", str(moved), str(other), "--cores", "1"]
+    where = {"PYTHONPATH": str(example.program), "PYTHONSAFEPATH": "1"}
+    good(example.finish(command, **where, TZ="Asia/Tokyo", LC_ALL="C"))
+    first, second = contents(example.results), contents(other)
+    assert list(first) == list(second)
+    assert [name for name in first if first[name] != second[name]] == []
+    told = [str(example.results.parent), str(ROOT), os.uname().nodename, f"{Path.home()}/"]
     for name, data in first.items():
-        assert not [word for word in told if len(word) > 3 and word in data], name
+        assert not [word for word in told if len(word) > 3 and word.encode() in data], name
+
+
+def test_example_with_its_sessions_adjusted_together_runs_through(example: Bench) -> None:
+    together = shutil.copytree(example.campaign, example.results.with_name("together"))
+    settings = together / "campaign.yaml"
+    settings.write_text(settings.read_text() + "\nadjust: campaign\n")
+    assert "adjust:" not in (example.campaign / "campaign.yaml").read_text()
+    results = example.results.with_name("together results")
+    good(example.run(campaign=str(together), results=str(results)))
+    first, second = contents(example.results), contents(results)
+    assert list(first) == list(second)
+    assert first["particles.csv"] != second["particles.csv"]

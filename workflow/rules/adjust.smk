@@ -6,9 +6,9 @@
 rule adjust:
     output:
         ".motescale/adjusted.json",
-    params:
-        digest=PLAN.adjusted,
     log:
         ".motescale/logs/adjust.log",
+    params:
+        digest=PLAN.adjusted,
     shell:
         "step adjust 2> {log:q}"

@@ -1,6 +1,6 @@
-# Purpose: draw the reports.
+# Purpose: draw the reports and lay out the files of each session.
 # Input:   the notes on the records; for the campaign's report the tables too.
-# Output:  a report for each session, the campaign's report.
+# Output:  the campaign's report; a report and a table of readings for each session.
 
 
 rule session_reports:
@@ -22,10 +22,25 @@ rule report:
         expand(rules.session_reports.output, batch=PLAN.batches),
     output:
         "report.pdf",
-        expand("sessions/{session}.pdf", session=SESSIONS),
     log:
         ".motescale/logs/report.log",
     params:
         digest=PLAN.campaign,
     shell:
         "step report 2> {log:q}"
+
+
+# Of its own because the workflow notes every input of a job with every output of it: few of one where many of the other.
+rule session_files:
+    input:
+        "run.json",
+        rules.report.output,
+    output:
+        expand("readings/{session}.csv", session=SESSIONS),
+        expand("sessions/{session}.pdf", session=SESSIONS),
+    log:
+        ".motescale/logs/session_files.log",
+    params:
+        digest=PLAN.campaign,
+    shell:
+        "step session_files 2> {log:q}"

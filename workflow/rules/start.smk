@@ -40,7 +40,7 @@ SESSIONS = sorted(PLAN.sessions)
 STEP = [sys.executable, "-m", "reduction.steps", "--campaign", str(CAMPAIGN)]
 
 os.environ.update(resultsfolder.job_environment(None if INSTALLED else HOME))
-shell.prefix(f"set -euo pipefail; step() {{ {shlex.join(STEP)} \"$@\"; }}; ".replace("{", "{{").replace("}", "}}"))
+shell.prefix(f'set -euo pipefail; step() {{ {shlex.join(STEP)} "$@"; }}; '.replace("{", "{{").replace("}", "}}"))
 
 
 wildcard_constraints:

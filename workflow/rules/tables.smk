@@ -1,6 +1,6 @@
 # Purpose: put the campaign's tables together and state what they were made from.
 # Input:   the notes on the records (the records are named by the digests in the plan).
-# Output:  one table of each kind, the readings of each session, run.json.
+# Output:  one table of each kind, run.json.
 
 
 rule tables:
@@ -8,7 +8,6 @@ rule tables:
         ".motescale/adjusted.json" if PLAN.together else expand(rules.reduce.output, batch=PLAN.batches),
     output:
         expand("{table}.csv", table=["particles", "methods", "agreement", "inputs", "components", "budget"]),
-        expand("readings/{session}.csv", session=SESSIONS),
         "run.json",
     log:
         ".motescale/logs/tables.log",

@@ -7,6 +7,7 @@ rule tidy:
     input:
         rules.tables.output,
         rules.report.output,
+        rules.session_files.output,
     output:
         ".motescale/tidied.json",
     log:
