@@ -12,7 +12,6 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
-from numpy.typing import NDArray
 
 from reduction.inputs import Input
 from reduction.methods import (
@@ -22,18 +21,24 @@ from reduction.methods import (
     ORIGIN,
     PRIVATE,
     SHAPE,
+    SINGULAR,
     Array,
+    Flags,
+    Indices,
     Linearised,
     Readings,
     Setting,
+    effective_u,
     linearise,
     predict,
 )
 
 RIDGE = 1e-8  # information added to ln s and ln gamma: u of what is open stays finite (1e4) and is reported as open
+SINGULAR_SQUARE = 1e-14  # least eigenvalue of a scaled normal matrix that is inverted
 ROUNDS = 60
 SETTLED = 1e-6  # of u: settled when the next step promises to lower chi-square by less than its square
 LONGEST = 1.0  # longest step in a logarithm
+FLAT = 1e-3  # a valley along which chi-square would fall by less than the square of this is not walked to its end
 SETTLED_TOGETHER = 1e-4  # the same for a group, where rounding of thousands of readings adds up
 FARTHEST = 4.0  # longest step of a shared input, in its u
 
@@ -45,7 +50,7 @@ class Model:
     setting: Setting
     logs: Mapping[str, Readings]
     sign: Array  # (N,)
-    drifting: NDArray[np.bool_]  # (N,)
+    drifting: Flags  # (N,)
 
     @property
     def particles(self) -> int:
@@ -53,7 +58,7 @@ class Model:
         return len(self.sign)
 
     @property
-    def active(self) -> NDArray[np.bool_]:
+    def active(self) -> Flags:
         """Which private unknowns of each particle are free, (N, 5)."""
         free = np.zeros((self.particles, len(PRIVATE)), bool)
         free[:, LN_S] = free[:, LN_GAMMA] = True
@@ -64,7 +69,7 @@ class Model:
         free[:, SHAPE] = (self.setting.shape_spread > 0.0) & self.setting.has_density
         return free
 
-    def subset(self, indices: NDArray[np.intp]) -> Model:
+    def subset(self, indices: Indices) -> Model:
         """Only the given particles, renumbered in the order given."""
         place = np.full(self.particles, -1)
         place[indices] = np.arange(len(indices))
@@ -96,10 +101,10 @@ class Normal:
     gradient: Array
     shared_gradient: Array
     chi_square: Array
-    readings: NDArray[np.intp]
+    readings: Indices
 
 
-def normal_equations(log: Readings, line: Linearised, particles: int, active: NDArray[np.bool_]) -> Normal:
+def normal_equations(log: Readings, line: Linearised, particles: int, active: Flags) -> Normal:
     """J'WJ, J'Wr and the cross terms with the shared inputs, summed over each particle's readings."""
     jacobian = np.concatenate([line.private * active[log.particle], line.shared], axis=1)
     width = jacobian.shape[1]
@@ -146,7 +151,7 @@ class Adjusted:
     normals: Mapping[str, Normal]
     lines: Mapping[str, Linearised]
     cost: Array  # chi-square with the priors' share, (N,) alone and (1,) otherwise
-    settled: NDArray[np.bool_]  # (N,)
+    settled: Flags  # (N,)
 
     @property
     def covariance(self) -> Array:
@@ -183,12 +188,12 @@ def _line_cost(model: Model, theta: Array, lines: Mapping[str, Linearised]) -> A
     return cost + theta[:, SHAPE] ** 2
 
 
-def _data_cost(model: Model, theta: Array, xi: Array, lines: Mapping[str, Linearised]) -> Array:
-    """Chi-square of the readings by particle with u held as in `lines`; infinite where the motion gives nothing."""
+def _data_cost(model: Model, theta: Array, xi: Array) -> Array:
+    """Chi-square of the readings by particle, u with the dc voltage's part; infinite where the motion gives nothing."""
     cost = np.zeros(model.particles)
     for name, prediction in predict(model.setting, model.logs, theta[None], model.sign, xi[None]).items():
         log = model.logs[name]
-        residual = (log.observed - prediction.reading[0]) / lines[name].u
+        residual = (log.observed - prediction.reading[0]) / effective_u(log, prediction)
         square = np.where(np.isfinite(residual), residual, np.inf) ** 2
         cost += np.bincount(log.particle, square, model.particles)
     return cost + theta[:, SHAPE] ** 2
@@ -256,10 +261,10 @@ def adjust_alone(model: Model, theta: Array, *, near: bool = False) -> Adjusted:
     cost = _line_cost(model, theta, lines) + (xi**2).sum(axis=1)
     for _ in range(ROUNDS):
         square, gradient = _joint(model, theta, xi, normals)
-        step = np.linalg.solve(_damped(square, damping), gradient[:, :, None])[:, :, 0]
+        step = (inverse_of(_damped(square, damping)) @ gradient[:, :, None])[:, :, 0]
         step *= np.where(settled, 0.0, _shortened(step))[:, None]
         trial, trial_xi = theta + step[:, :5], xi + step[:, 5:]
-        trial_cost = _data_cost(model, trial, trial_xi, lines) + (trial_xi**2).sum(axis=1)
+        trial_cost = _data_cost(model, trial, trial_xi) + (trial_xi**2).sum(axis=1)
         better = trial_cost <= cost * (1.0 + 1e-12) + 1e-12
         theta, xi = np.where(better[:, None], trial, theta), np.where(better[:, None], trial_xi, xi)
         damping = np.where(better, np.maximum(damping * 0.1, 1e-12), damping * 10.0)
@@ -269,10 +274,11 @@ def adjust_alone(model: Model, theta: Array, *, near: bool = False) -> Adjusted:
         cost = _line_cost(model, theta, lines) + (xi**2).sum(axis=1)
         if settled.all():
             break
+    settled |= (size < FLAT) & np.isfinite(cost)
     private, cross, shared, _, _ = _assemble(model, theta, normals)
-    inverse = np.linalg.inv(private)
+    inverse = inverse_of(private)
     response = -inverse @ cross
-    spread = np.linalg.inv(np.eye(width) + shared + np.swapaxes(cross, 1, 2) @ response)
+    spread = _posterior(shared + np.swapaxes(cross, 1, 2) @ response)
     group = tuple(model.setting.inputs[one] for one in model.setting.uncertain)
     return Adjusted(
         model,
@@ -302,6 +308,46 @@ def _readings_root(spread: Array) -> Array:
     return root
 
 
+def inverse_of(square: Array) -> Array:
+    """Inverses of symmetric normal matrices, shape (..., n, n), scaled to a unit diagonal first.
+
+    A direction that the readings leave open gets a large variance instead of none, and no step.
+    """
+    index = np.arange(square.shape[-1])
+    size = np.sqrt(np.maximum(square[..., index, index], 1e-30))
+    values, vectors = np.linalg.eigh(square / (size[..., :, None] * size[..., None, :]))
+    reciprocal = vectors / np.maximum(values, SINGULAR_SQUARE)[..., None, :]
+    inverse: Array = (reciprocal @ np.swapaxes(vectors, -1, -2)) / (size[..., :, None] * size[..., None, :])
+    return inverse
+
+
+def _posterior(information: Array) -> Array:
+    """Covariance (1 + M)^-1 of inputs with a unit normal prior; information M from readings is never negative."""
+    values, vectors = np.linalg.eigh(information)
+    spread: Array = (vectors / (1.0 + np.maximum(values, 0.0))[..., None, :]) @ np.swapaxes(vectors, -1, -2)
+    return spread
+
+
+def ranks(adjusted: Adjusted) -> tuple[Indices, Flags]:
+    """How many private unknowns the readings of each particle fix, (N,), and which have rank, (N, 5).
+
+    Rank is missing where a singular value of the scaled Jacobian is below 1e-6 of the largest; an unknown that a
+    missing direction touches has none. A shape deviation, fixed by its prior, counts in neither.
+    """
+    model = adjusted.model
+    square = sum((normal.private for normal in adjusted.normals.values()), np.zeros((model.particles, 5, 5)))
+    size = np.einsum("nii->ni", square)
+    free = model.active & (size > 1e-7)
+    free[:, SHAPE] = False
+    scale = np.sqrt(np.where(free, size, 1.0))
+    scaled = np.where(free[:, :, None] & free[:, None, :], square, 0.0) / (scale[:, :, None] * scale[:, None, :])
+    values, vectors = np.linalg.eigh(scaled)
+    missing = values < SINGULAR**2 * np.maximum(values[:, -1:], 1e-300)
+    touched = (np.abs(vectors) * missing[:, None, :]).max(axis=2) > 1e-3
+    count: Indices = (~missing).sum(axis=1)
+    return count, free & ~touched
+
+
 def _joint(model: Model, theta: Array, xi: Array, normals: Mapping[str, Normal]) -> tuple[Array, Array]:
     """Normal matrix (N, 5 + K, 5 + K) and gradient of each particle with its own copy of the shared inputs."""
     private, cross, shared, gradient, shared_gradient = _assemble(model, theta, normals)
@@ -317,7 +363,7 @@ class _Member:
 
     model: Model
     theta: Array
-    columns: NDArray[np.intp]  # place of the session's inputs among the group's
+    columns: Indices  # place of the session's inputs among the group's
     lines: Mapping[str, Linearised]
     normals: Mapping[str, Normal]
 
@@ -328,7 +374,7 @@ class _Member:
         return float(_line_cost(self.model, self.theta, self.lines).sum())
 
     def trial_cost(self, theta: Array, xi: Array) -> float:
-        return float(_data_cost(self.model, theta, xi[None, self.columns], self.lines).sum())
+        return float(_data_cost(self.model, theta, xi[None, self.columns]).sum())
 
 
 def adjust_together(models: list[Model], starts: list[Array]) -> list[Adjusted]:
@@ -386,7 +432,7 @@ def adjust_together(models: list[Model], starts: list[Array]) -> list[Adjusted]:
 def _reduced(member: _Member) -> tuple[Array, Array, Array, Array, Array, Array]:
     """Inverse private block, response, own step, gradient, and the share of the shared inputs' normal equations."""
     private, cross, shared, gradient, shared_gradient = _assemble(member.model, member.theta, member.normals)
-    inverse = np.linalg.inv(private)
+    inverse = inverse_of(private)
     response = -inverse @ cross
     own = inverse @ gradient[:, :, None]
     square = shared.sum(axis=0) + (np.swapaxes(cross, 1, 2) @ response).sum(axis=0)
@@ -414,7 +460,7 @@ def _finished(members: list[_Member], xi: Array, group: tuple[Input, ...], settl
     square = np.eye(len(xi))
     for one, part in zip(members, parts, strict=True):
         square[np.ix_(one.columns, one.columns)] += part[3]
-    spread = np.linalg.inv(square)
+    spread = _posterior(square - np.eye(len(xi)))
     root = _readings_root(spread)
     found = []
     for one, (inverse, response, *_) in zip(members, parts, strict=True):

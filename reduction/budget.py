@@ -151,7 +151,7 @@ def results_of(adjusted: Adjusted, *, alone: bool, size: OwnSize | None = None) 
     private = by_private @ adjusted.private @ np.swapaxes(by_private, 1, 2)
     if size is not None:
         on_size = np.array([0.0, 0.0, 1.0, 3.0, 3.0, 1.0])
-        private = private + (size.u / size.diameter)[:, None, None] ** 2 * np.outer(on_size, on_size)
+        private = private + (np.nan_to_num(size.u) / size.diameter)[:, None, None] ** 2 * np.outer(on_size, on_size)
     by_input = total @ adjusted.from_priors
     by_readings = total @ adjusted.from_readings
     own, log_total = _by_log(adjusted, by_private, total, size)
@@ -185,7 +185,9 @@ def _by_log(
     if (adjusted.model.setting.shape_spread > 0.0).any():
         own["shape_factor_spread"] = on_private[:, :, SHAPE] ** 2 * adjusted.model.active[:, SHAPE, None]
     if size is not None:
-        own["diameter"] = (size.u / size.diameter)[:, None] ** 2 * np.array([0.0, 0.0, 1.0, 9.0, 9.0, 1.0])
+        own["diameter"] = (np.nan_to_num(size.u) / size.diameter)[:, None] ** 2 * np.array(
+            [0.0, 0.0, 1.0, 9.0, 9.0, 1.0]
+        )
     return own, whole
 
 
@@ -207,7 +209,7 @@ def effective_dof(results: Results, log_dof: Mapping[str, float]) -> Array:
 def interval(results: Results, dof: Array, coverage: float) -> tuple[Array, Array]:
     """Coverage interval of each result, (N, 6) each: value exp(+-t u) by Student's t, low below high."""
     factor = stats.t.ppf(0.5 + coverage / 2.0, np.clip(dof, 1.0, 1e9))
-    spread = factor * np.sqrt(results.variance)
+    spread = np.minimum(factor * np.sqrt(results.variance), 300.0)  # of what is not determined, and not reported
     ends = results.value * np.exp(-spread), results.value * np.exp(spread)
     return np.minimum(*ends), np.maximum(*ends)
 

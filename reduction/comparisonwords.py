@@ -14,11 +14,13 @@ from reduction.histogram import Distribution
 from reduction.intrinsic import LOWER_BOUND, NOT_DETERMINED
 from reduction.pairs import Pair
 from reduction.quantity import shorthand
-from reduction.sessionmeans import LEFT_OUT
+from reduction.sessionmeans import LEFT_OUT, Facts
 from reduction.transitivity import CONSISTENT, CONTRADICTORY, UNDECIDED
+from reduction.unseen import lost_by_group
 from reduction.wording import RESULTS, counted, joined, unit_words
 
 Array = NDArray[np.floating[Any]]
+MOST_TOLD = 10  # differences in words; the table has them all
 SHRINK = {
     "sessions": "more sessions: what differs from session to session weighs most",
     "particles": "more particles, or more sessions: the scatter of single particles weighs most",
@@ -88,8 +90,10 @@ def _differences(found: Comparison) -> Iterator[str]:
         f"{len(sure)} of {counted(len(tested), 'difference')} {'is' if len(sure) == 1 else 'are'} sure at a level of "
         f"{_percent(alpha)} for all together (Holm)."
     )
-    for one in sorted(sure, key=lambda one: (one.p_holm, one.group_a, one.group_b)):
+    for one in sorted(sure, key=lambda one: (one.p_holm, one.group_a, one.group_b))[:MOST_TOLD]:
         yield _difference(one, found.unit)
+    if len(sure) > MOST_TOLD:
+        yield f"{len(sure) - MOST_TOLD} more sure differences stand in contrasts.csv."
     for names in found.alike:
         if len(names) > 1:
             yield f"Not told apart: {joined(list(names))}."
@@ -201,9 +205,14 @@ def _largest(found: Comparison, shared: Array, chosen: NDArray[np.bool_]) -> str
     return found.means.names[int(np.argmax(left))] if left.any() else ""
 
 
-def charge_statements(found: list[Distribution]) -> list[str]:
+def charge_statements(found: list[Distribution], facts: Facts, by: str) -> list[str]:
     """What must be said beside the histograms of charge."""
     said = []
+    shown = {(one.group, one.species) for one in found}
+    for (group, species), reasons in lost_by_group(facts, by).items():
+        if (group, species) not in shown:
+            lost = counted(sum(reasons.values()), "particle")
+            said.append(f"{group}, {species}: {lost} lost, and no other gave a charge: there is no histogram.")
     for one in found:
         name = f"{one.group}, {one.species}"
         if one.intrinsic.basis == NOT_DETERMINED:

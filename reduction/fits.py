@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import lmfit
 import numpy as np
@@ -17,6 +17,7 @@ from reduction.methods import (
     ORIGIN,
     PREDICT,
     PRIVATE,
+    SINGULAR,
     Array,
     Flags,
     Readings,
@@ -29,10 +30,9 @@ from reduction.methods import (
     surroundings,
 )
 
-SINGULAR = 1e-6  # smallest singular value of the scaled Jacobian over the largest, below which rank is missing
 UNDETERMINED = 0.5  # u of a logarithm beyond which a quantity counts as not determined
 NEEDED_P = 0.01  # a charge drift is fitted where the data ask for it at this level
-REWEIGHTINGS = 4  # rounds of effective variance
+ROUNDING = 1e-9  # relative spread below which readings are equal but for rounding
 BAD_READING = 1e3  # normalised residual standing in for a reading the motion cannot give
 
 
@@ -192,19 +192,14 @@ def fit_method(
     """Fit the active private unknowns of one particle to one log, from theta (5,) on."""
     if not len(log):
         return _unfitted(method, "few_readings", "no readings", active)
-    index, start_theta = list(active), theta
-    for _ in range(REWEIGHTINGS):
-        fixed = _weighed(method, setting, log, start_theta, sign)
-        fit = _fit_weighed(method, setting, fixed, start_theta, sign, index)
-        start_theta = start_theta.copy()
-        start_theta[index] = fit.values
-        if not (log.u_voltage > 0.0).any() or fit.status in ("few_readings", "not_converged"):
-            break
-        if np.allclose(_weighed(method, setting, log, start_theta, sign).u, fixed.u, rtol=1e-6, atol=0.0):
-            break
+    index = list(active)
+    fit = _fit_private(method, setting, log, theta, sign, index)
     full = np.full(5, np.nan)
     full[index] = fit.values
     status, reason = fit.status, fit.reason
+    found = theta.copy()
+    found[index] = fit.values
+    u = _weights(method, setting, log, found, sign)
     if fit.status != "few_readings" and (np.abs(fit.residual) >= BAD_READING).any():
         status, reason = "no_oscillation", "no secular oscillation exists for the charge and drag that the log asks for"
         if method != "secular":
@@ -227,7 +222,7 @@ def fit_method(
         full,
         (determined[0], determined[1]),
         fit.residual,
-        fixed.u,
+        u,
         fit.chi_square,
         fit.dof,
         len(log),
@@ -235,18 +230,17 @@ def fit_method(
     )
 
 
-def _weighed(method: str, setting: Setting, log: Readings, theta: Array, sign: float) -> Readings:
-    """Readings with the u of their dc voltage carried along the slope at theta."""
+def _weights(method: str, setting: Setting, log: Readings, theta: Array, sign: float) -> Array:
+    """Standard uncertainty of each reading with that of its dc voltage carried along the slope at theta."""
     if not (log.u_voltage > 0.0).any():
-        return log
+        return log.u
     nothing = np.zeros((1, 1, len(setting.uncertain)))
     prediction = predict(setting, {method: log}, theta[None, None], np.array([sign]), nothing)[method]
-    u = effective_u(log, prediction)
-    return replace(log, u=np.where(np.isfinite(u), u, log.u), u_voltage=np.zeros(len(log)))
+    return effective_u(log, prediction)
 
 
-def _fit_weighed(method: str, setting: Setting, log: Readings, theta: Array, sign: float, index: list[int]) -> Fit:
-    """Least squares of the private unknowns at `index` with the weights held."""
+def _fit_private(method: str, setting: Setting, log: Readings, theta: Array, sign: float, index: list[int]) -> Fit:
+    """Least squares of the private unknowns at `index`, the others held at theta."""
     nothing = np.zeros((1, 1, len(setting.uncertain)))
     trial = Trial(method, setting, surroundings(setting, nothing), log, sign)
 
@@ -284,8 +278,9 @@ def balance_start(setting: Setting, log: Readings) -> tuple[float, float]:
     value = {role: float(one[0, 0]) for role, one in around.values.items()}
     true = setting.polarity * (value["gain_dc_voltage"] * log.observed.mean() + value["offset_dc_voltage"])
     field = value["dc_field"] * true + value["stray_field"]
-    if field == 0.0:
-        field = np.finfo(float).tiny
+    least = abs(value["dc_field"]) * 1e-6  # a field that a microvolt makes stands in for none
+    if abs(field) < least:
+        field = least
     s = float(around.gravity[0, 0]) / field
     return float(np.sign(s)), float(np.log(abs(s)))
 
@@ -296,7 +291,7 @@ def drift_asked_for(log: Readings, *, scatter: bool) -> bool:
     The balance voltage goes as 1/s, so a drift shows as a slope in time. With stated u the drop of chi-square by the
     slope has one degree of freedom; with u from scatter it is an F test.
     """
-    if len(log) < 4 or not np.ptp(log.elapsed) > 0.0:
+    if len(log) < 4 or not np.ptp(log.elapsed) > 0.0 or np.ptp(log.observed) <= ROUNDING * np.abs(log.observed).max():
         return False
     weight = 1.0 / log.u
     readings = log.observed * weight

@@ -1,9 +1,12 @@
 """Group means with the session as the unit, and the covariance between them.
 
-The mean of group g is sum w_i y_i over its session means y_i, with weights in proportion to 1/(tau_g^2 + v_i) that sum
+The mean of group g is sum w_i y_i over its session means y_i, with weights in proportion to 1/(t_g^2 + v_i) that sum
 to 1. v_i = s_g^2 / n_i comes from the scatter of single particles within sessions, pooled over the group: it depends
-on the number of particles but not on their values. Shared components stay out of the weights: errors in proportion to
-the value would pull a weighted mean low. They enter where they belong, in the covariance
+on the number of particles but not on their values. t_g^2 is tau_g^2, but no less than the mean of v: few sessions often
+show tau_g = 0 by chance, one large session would then be the whole mean, and its interval covered 86 to 93 % in trials
+with sessions of 1 to 60 particles; with this bound 95 %. Sessions of equal size have equal weights in any case. Shared
+components stay out of the weights: errors in proportion to the value would pull a weighted mean low. They enter where
+they belong, in the covariance
 
     cov(g, h) = [g = h] sum w_i^2 (tau_g^2 + v_i) + sum_k (sum w_i c_ik)_g (sum w_i c_ik)_h
 
@@ -11,10 +14,10 @@ so what groups share cancels in their differences and ratios, and does not shrin
 
 tau_g belongs to each group. Pooled over groups it would bring degrees of freedom, but the spread of charge grows with
 the charge, a spread relative to a mean near zero means nothing, and a false pooling is not seen with few sessions.
-tau_g comes from Paule and Mandel's equation with the shared covariance inside: then u is that of Hartung and Knapp,
-never below what the scatter of particles alone makes it. The degrees of freedom are Satterthwaite's,
-2 u^4 / var(u^2), with var(u^2) = var(tau^2) (sum w_i^2)^2; for equal sessions and nothing shared, sessions less one.
-Residuals of two groups then have those of Welch.
+tau_g comes from Paule and Mandel's equation with the shared covariance inside: u is close to that of Hartung and Knapp
+(equal to it for equal sessions), never below what the scatter of particles alone makes it. The degrees of freedom are
+Satterthwaite's, 2 u^4 / var(u^2), with var(u^2) = var(tau^2) (sum w_i^2)^2; for equal sessions and nothing shared,
+sessions less one. Differences of two groups then have those of Welch.
 """
 
 from __future__ import annotations
@@ -163,7 +166,7 @@ def _group_mean(cells: Cells, group: str) -> GroupMean:
                          intrinsic, np.full(1, math.nan), nothing)  # fmt: skip
     left = residuals(y, np.diag(sampling) + shared @ shared.T)
     tau = paule_mandel(left)
-    total = tau + sampling
+    total = max(tau, float(sampling.mean())) + sampling
     weights = 1.0 / total if (total > 0.0).all() else np.ones(len(at))
     weights = weights / weights.sum()
     spread = tau_squared_variance(left, tau) if (tau + left.variances > 0.0).all() else 0.0

@@ -10,12 +10,15 @@ from typing import Any
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
+from scipy.special import ndtr
 
 from reduction.groupmeans import group_means
 from reduction.intrinsic import Intrinsic, fraction_positive, intrinsic, lot_free, lot_means
 from reduction.multiplicity import reach
-from reduction.sessionmeans import JOINT, Facts, Sample, cells_of, gather, group_word
+from reduction.sessionmeans import JOINT, Facts, Sample, cells_of, gather
 from reduction.shapes import stream
+from reduction.units import ELEMENTARY_CHARGE
+from reduction.unseen import lost_of, window_of
 
 Array = NDArray[np.floating[Any]]
 MOST_BINS = 60
@@ -199,32 +202,6 @@ def distributions(
     return found
 
 
-def lost_of(facts: Facts, by: str, group: str, species: str) -> dict[str, int]:
-    """Particles lost of one group and species, by reason."""
-    counts: dict[str, int] = {}
-    for session in sorted(facts):
-        for one in facts[session].get("lost") or []:
-            if one["species"] == species and group_word(one, facts[session], by) == group:
-                counts[one["reason"]] = counts.get(one["reason"], 0) + 1
-    return dict(sorted(counts.items()))
-
-
-def window_of(facts: Facts, sessions: list[str]) -> dict[str, tuple[float, float]]:
-    """Widest window of charge-to-mass sizes [C/kg] that any of the sessions could have held, by sign.
-
-    An end is NaN where a session leaves it open; a sign is absent where no session could have held it.
-    """
-    found = {}
-    for word in ("positive", "negative"):
-        windows = [(facts[name].get("window") or {}).get(f"{word}_C_per_kg") for name in sessions]
-        known = [one for one in windows if one is not None]
-        if known:
-            least = [math.nan if one[0] is None else float(one[0]) for one in known]
-            most = [math.nan if one[1] is None else float(one[1]) for one in known]
-            found[word] = (float(np.min(least)), float(np.max(most)))
-    return found
-
-
 def histogram_rows(found: list[Distribution]) -> Iterator[dict[str, Any]]:
     """Rows of histogram.csv, one for each bin."""
     for one in found:
@@ -247,8 +224,6 @@ def histogram_rows(found: list[Distribution]) -> Iterator[dict[str, Any]]:
 
 def distribution_rows(found: list[Distribution]) -> Iterator[dict[str, Any]]:
     """Rows of charge_distribution.csv: the empirical distribution, as read and blurred by every particle's own u."""
-    from scipy.special import ndtr
-
     for one in found:
         order = np.argsort(one.sample.value, kind="stable")
         value, u = one.sample.value[order], one.sample.u[order]
@@ -273,8 +248,6 @@ def summary_rows(found: list[Distribution]) -> Iterator[dict[str, Any]]:
     `fraction_positive_least` and `_most` take the lost particles in as all negative and all positive: what they were
     is not known, only that they were there.
     """
-    from reduction.charge import ELEMENTARY_CHARGE
-
     for one in found:
         count = len(one.sample.value)
         lost = sum(one.lost.values())

@@ -25,6 +25,8 @@ LN_S, LN_GAMMA, ORIGIN, DRIFT, SHAPE = range(5)
 STEP = 1e-5  # of central differences in logarithms and in xi: truncation and rounding both near 1e-10
 SIGNED = ("stray_field", "offset_dc_voltage", "humidity", "latitude", "elevation", "finite_reynolds")
 LEAST = 0.02  # of its estimate, the least a positive input is tried at
+SINGULAR = 1e-6  # smallest singular value of a scaled Jacobian over the largest, below which rank is missing
+REACH = 60.0  # ln s and ln gamma beyond this are tried as this
 LOGS = ("balance", "height", "secular", "diameter")
 
 
@@ -137,7 +139,7 @@ class Particle:
 def particle_properties(setting: Setting, around: Surroundings, theta: Array, sign: Array) -> Particle:
     """Diameter, density and apparent gravity that go with theta, shape (P, N, 5)."""
     shape = np.broadcast_shapes(theta.shape[:2], around.gravity.shape)
-    gamma = np.broadcast_to(np.exp(theta[..., LN_GAMMA]), shape)
+    gamma = np.broadcast_to(np.exp(np.clip(theta[..., LN_GAMMA], -REACH, REACH)), shape)
     density, factor = np.full(shape, np.nan), np.ones(shape)
     for name in set(setting.species):
         own = np.array([one == name for one in setting.species])
@@ -158,7 +160,13 @@ def particle_properties(setting: Setting, around: Surroundings, theta: Array, si
         )
         diameter[:, known] = solved
     lightness = np.where(known, around.air_density / np.where(known, density, 1.0), 0.0)
-    return Particle(sign * np.exp(theta[..., LN_S]), gamma, diameter, density, around.gravity * (1.0 - lightness))
+    return Particle(
+        sign * np.exp(np.clip(theta[..., LN_S], -REACH, REACH)),
+        gamma,
+        diameter,
+        density,
+        around.gravity * (1.0 - lightness),
+    )
 
 
 def _columns(values: Array, shape: tuple[int, ...]) -> Array:
@@ -266,7 +274,7 @@ def predict_height(
     reynolds = _at(value["finite_reynolds"], at) * log.reynolds
     reading = (_at(theta[..., ORIGIN], at) + mean * shown * (1.0 + reynolds)) / gain
     dc_gain = _at(value["gain_dc_voltage"], at)
-    slope = (setting.polarity * dc_gain * per_volt * shown / gain)[0]
+    slope = (setting.polarity * dc_gain * per_volt * shown * (1.0 + reynolds) / gain)[0]
     return Prediction(reading, slope)
 
 
@@ -299,7 +307,8 @@ def predict_secular(
     """Secular frequency [Hz], nan where the exact motion has none."""
     scaled = scaled_motion(setting, around, particle, theta, log)
     function = motion.ring_down if setting.secular_reading == "ring_down" else motion.response_peak
-    nu = carried(lambda *point: function(*point)[0], scaled)
+    observed = 2.0 * np.pi * log.observed / log.omega  # near the answer as a rule, and checked where it is used
+    nu = carried(lambda *point: function(*point, near=observed)[0], scaled)
     return Prediction(nu * scaled.omega / (2.0 * np.pi))
 
 
@@ -314,7 +323,7 @@ def predict_diameter(
         role = f"lot_diameter:{name}"
         own = log.lot & np.array([setting.species[one] == name for one in at], dtype=bool)
         if own.any():
-            reading = np.where(own, diameter - around.values[role], reading)
+            reading = np.where(own, diameter - _at(around.values[role], at), reading)
     return Prediction(reading)
 
 
@@ -369,15 +378,33 @@ def linearise(
         target = thetas[..., index] if index < 5 else xis[..., index - 5]
         target[1 + 2 * place] += steps[index]
         target[2 + 2 * place] -= steps[index]
+    base = {}
+    noisy = {name: log for name, log in logs.items() if (log.u_voltage > 0.0).any()}
+    if noisy:
+        base = predict(setting, noisy, theta[None], sign, xi[None])
+        logs = {**logs, **{name: at_likely_voltage(log, base[name]) for name, log in noisy.items()}}
     found = {}
     for name, prediction in predict(setting, logs, thetas, sign, xis).items():
         log, reading = logs[name], prediction.reading
         u = effective_u(log, prediction)
         slopes = np.zeros((len(log), len(steps)))
         slopes[:, varied] = ((reading[1::2] - reading[2::2]) / (2.0 * steps[varied][:, None]) / u).T
-        residual = (log.observed - reading[0]) / u
-        found[name] = Linearised(residual, slopes[:, :5], slopes[:, 5:], u, reading[0])
+        read = base[name].reading[0] if name in base else reading[0]
+        found[name] = Linearised((log.observed - read) / u, slopes[:, :5], slopes[:, 5:], u, read)
     return found
+
+
+def at_likely_voltage(log: Readings, prediction: Prediction) -> Readings:
+    """Readings at the dc voltages most likely to have been there: V + u_V^2 slope (reading - predicted) / u_eff^2.
+
+    Slopes taken at the voltages as read would be correlated with their noise and pull the fit towards flat lines.
+    """
+    if prediction.slope is None:
+        return log
+    u = effective_u(log, prediction)
+    with np.errstate(invalid="ignore"):
+        shift = log.u_voltage**2 * prediction.slope * (log.observed - prediction.reading[0]) / u**2
+    return replace(log, voltage=log.voltage + np.where(np.isfinite(shift), shift, 0.0))
 
 
 def effective_u(log: Readings, prediction: Prediction) -> Array:

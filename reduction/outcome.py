@@ -9,7 +9,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from reduction import budget
-from reduction.adjustment import Adjusted
+from reduction.adjustment import Adjusted, adjust_alone
 from reduction.budget import OwnSize, Results, results_of
 from reduction.logs import Logs
 from reduction.methods import Array, Flags, Indices
@@ -43,6 +43,7 @@ class Outcome:
     reading_words: dict[tuple[str, int], list[str]] = field(default_factory=dict)  # log and row: flags
     flagged: list[list[object]] = field(default_factory=list)  # log, line, particle, text
     strain: Strain | None = None  # of the session adjusted together
+    drag_alone: Adjusted | None = None  # particles adjusted alone without the diameter method, all of the session
 
     def known(self, place: int) -> list[bool]:
         """Which of the results of one row of the adjustment are determined."""
@@ -63,6 +64,8 @@ def outcome_of(
     dof = budget.effective_dof(results, reduced.scatter)
     low, high = budget.interval(results, dof, options.coverage_probability)
     sure = is_determined(adjusted)
+    drag_alone = adjust_alone(reduced.alone.model.without("diameter"), reduced.alone.theta, near=True)
+    _flag_sizes_from_lot(reduced, drag_alone)
     return Outcome(
         campaign,
         session,
@@ -79,8 +82,19 @@ def outcome_of(
         high,
         sure,
         sure[:, 1] if size is None else np.isfinite(size.u),
+        drag_alone=drag_alone,
         strain=None if alone else strain_of(adjusted, names, leave_one_out=options.adjust == "session"),
     )
+
+
+def _flag_sizes_from_lot(reduced: Reduced, drag_alone: Adjusted) -> None:
+    """Flag particles whose size only the lot's mean and spread fix."""
+    log = reduced.model.logs.get("diameter")
+    if log is None:
+        return
+    open_without = ~is_determined(drag_alone)[:, 1]
+    for index in log.particle[log.lot & open_without[log.particle]].tolist():
+        reduced.flags[index].add("size_from_lot")
 
 
 def own_sizes(prepared: Prepared, chosen: Indices) -> OwnSize:

@@ -29,6 +29,7 @@ class Prepared:
     species: tuple[str, ...]
     charged_with: tuple[str, ...]
     excluded: dict[str, str]  # particle: reason
+    described: dict[str, tuple[str, str]]  # excluded particle: species, charged_with
     left_out: tuple[tuple[str, int, str, str], ...]  # log, line, particle, reason
     setting: Setting
     logs: dict[str, Readings]
@@ -41,6 +42,13 @@ def prepare(campaign: Campaign, session: Session, logs: Logs) -> Prepared:
     details = _details(logs.particles)
     excluded = {
         name: str(details[name]["exclude"]) for name in sorted(mentioned & details.keys()) if details[name]["exclude"]
+    }
+    described = {
+        name: (
+            str(details[name]["species"] or session.species),
+            str(details[name]["charged_with"] or session.charged_with),
+        )
+        for name in excluded
     }
     names = tuple(sorted(mentioned - excluded.keys()))
     species = tuple(str(details.get(name, {}).get("species") or session.species) for name in names)
@@ -78,7 +86,7 @@ def prepare(campaign: Campaign, session: Session, logs: Logs) -> Prepared:
     if len(sizes):
         readings["diameter"] = sizes
         unstated["diameter"] = np.zeros(len(sizes), bool)
-    return Prepared(names, species, charged_with, excluded, tuple(left_out), setting, readings, unstated)
+    return Prepared(names, species, charged_with, excluded, described, tuple(left_out), setting, readings, unstated)
 
 
 def _details(table: pd.DataFrame | None) -> dict[str, dict[str, object]]:

@@ -12,6 +12,7 @@ import pandas as pd
 from reduction.methods import Readings
 from reduction.outcome import Outcome
 from reduction.preparation import OBSERVED
+from reduction.resultrows import readings_used
 from reduction.solution import OUTLIER
 
 REYNOLDS_LIMIT = 0.05  # relative shift of a height beyond which it is flagged
@@ -64,8 +65,13 @@ def reading_rows(outcome: Outcome) -> Iterator[dict[str, Any]]:
         if log not in outcome.logs.tables:
             continue
         residuals = _residuals(outcome, log)
+        left_out = {
+            name: outcome.reduced.fits[log][place].status
+            for place, name in enumerate(outcome.prepared.names)
+            if log in outcome.reduced.fits and not readings_used(outcome, log, place)
+        }
         for index, row in outcome.logs.tables[log].iterrows():
-            yield _reading_row(outcome, log, int(str(index)), row, residuals)
+            yield _reading_row(outcome, log, int(str(index)), row, residuals, left_out)
 
 
 def _residuals(outcome: Outcome, log: str) -> dict[int, tuple[float, float, float, float]]:
@@ -93,12 +99,23 @@ def _residuals(outcome: Outcome, log: str) -> dict[int, tuple[float, float, floa
 
 
 def _reading_row(
-    outcome: Outcome, log: str, index: int, row: pd.Series[Any], residuals: Mapping[int, tuple[float, ...]]
+    outcome: Outcome,
+    log: str,
+    index: int,
+    row: pd.Series[Any],
+    residuals: Mapping[int, tuple[float, ...]],
+    left_out: Mapping[str, str],
 ) -> dict[str, Any]:
+    """One reading: used, flagged and used, excluded by the user, or left out by the reduction, with the status why."""
     words = outcome.reading_words.get((log, index), [])
     excluded = str(row["exclude"]) or (
         outcome.prepared.excluded.get(row["particle"], "") and f"particle: {outcome.prepared.excluded[row['particle']]}"
     )
+    status = "flagged" if words else "used"
+    if excluded:
+        status = "excluded"
+    elif row["particle"] in left_out:
+        status, words = "left_out", [left_out[row["particle"]]]
     u, residual, normalized, adjusted = residuals.get(index, (math.nan,) * 4)
     scale = 1e3 if log == "height" else 1.0
     return {
@@ -106,7 +123,7 @@ def _reading_row(
         "particle": row["particle"],
         "log": log,
         "line": int(row["line"]),
-        "status": "excluded" if excluded else "flagged" if words else "used",
+        "status": status,
         "flags": ";".join(words),
         "exclude": excluded,
         "drive_voltage_peak_V": row["drive_amplitude"],

@@ -39,8 +39,8 @@ def particle_rows(outcome: Outcome) -> Iterator[dict[str, Any]]:
         yield {column: math.nan for column in COLUMNS["particles"]} | {
             "session": outcome.session.id,
             "particle": name,
-            "species": "",
-            "charged_with": "",
+            "species": outcome.prepared.described[name][0],
+            "charged_with": outcome.prepared.described[name][1],
             "status": "excluded",
             "flags": "",
             "methods": "",

@@ -8,7 +8,7 @@ import numpy as np
 import pandas as pd
 
 from reduction import budget
-from reduction.adjustment import adjust_alone, adjust_together
+from reduction.adjustment import adjust_together
 from reduction.logs import Logs
 from reduction.outcome import Outcome, outcome_of
 from reduction.preparation import prepare
@@ -18,7 +18,7 @@ from reduction.resultrows import agreement_rows, input_rows, method_rows, partic
 from reduction.sanity import notes_of
 from reduction.sessionfacts import facts
 from reduction.settings import Campaign
-from reduction.solution import Reduced, adjust_session, fit_session
+from reduction.solution import Reduced, adjust_session, fit_session, without_diameter
 from reduction.tables import COLUMNS
 
 
@@ -80,10 +80,7 @@ def reduce_campaign(campaign: Campaign, logs: Mapping[str, Logs]) -> dict[str, S
 
 def _solved(campaign: Campaign, session_id: str, logs: Logs) -> Reduced:
     reduced = fit_session(prepare(campaign, campaign.sessions[session_id], logs), campaign.options.scatter)
-    if campaign.options.mass_from != "adjusted":  # then the diameter method stays out of what it is compared with
-        reduced.alone = adjust_alone(reduced.model.without("diameter"), reduced.alone.theta)
-        reduced.model = reduced.alone.model
-    return reduced
+    return reduced if campaign.options.mass_from == "adjusted" else without_diameter(reduced)
 
 
 def record_of(outcome: Outcome) -> SessionRecord:

@@ -6,12 +6,12 @@ from typing import Any
 
 import numpy as np
 
-from reduction.adjustment import adjust_alone
 from reduction.budget import Results, results_of
 from reduction.charge import electrons
 from reduction.curves import curves_of
 from reduction.methods import Flags
 from reduction.outcome import CHARGE, DIAMETER, MASS, Outcome, own_sizes
+from reduction.preparation import EXACT
 from reduction.quantity import shorthand
 from reduction.resultrows import adjusted_inputs
 from reduction.solution import is_determined
@@ -61,7 +61,8 @@ def facts(outcome: Outcome, sanity: list[tuple[int, str, str]]) -> dict[str, Any
         "coverage_probability": outcome.campaign.options.coverage_probability,
         "exact_inputs": [
             [one.name, repr(one.written), one.unit] for one in outcome.prepared.setting.inputs if not one.quantity.u
-        ],
+        ]
+        + _exact_diameters(outcome),
         "left_out": [[log, line, name, reason] for log, line, name, reason in outcome.prepared.left_out]
         + [["particles", 0, name, reason] for name, reason in sorted(outcome.prepared.excluded.items())],
         "flagged": outcome.flagged,
@@ -85,6 +86,18 @@ def facts(outcome: Outcome, sanity: list[tuple[int, str, str]]) -> dict[str, Any
             [place for place in range(len(outcome.names)) if outcome.sure[place, 0]],
         ),
     }
+
+
+def _exact_diameters(outcome: Outcome) -> list[list[str]]:
+    """Own diameters stated without an uncertainty."""
+    log = outcome.prepared.logs.get("diameter")
+    if log is None:
+        return []
+    return [
+        [f"particle/{outcome.session.id}/{outcome.prepared.names[index]}/diameter_um", repr(observed * 1e6), "um"]
+        for index, observed, u in zip(log.particle.tolist(), log.observed.tolist(), log.u.tolist(), strict=True)
+        if u == EXACT * observed
+    ]
 
 
 def _notes(outcome: Outcome, sanity: list[tuple[int, str, str]]) -> list[str]:
@@ -121,16 +134,15 @@ def _strain(outcome: Outcome) -> dict[str, Any] | None:
 def _masses(outcome: Outcome) -> dict[str, list[dict[str, Any]]]:
     """Diameter, mass and charge of each particle from the adjusted drag rate, drag alone and diameter alone."""
     found: dict[str, list[dict[str, Any]]] = {name: [] for name in outcome.names}
-    base, theta = outcome.reduced.alone.model, outcome.reduced.alone.theta
     chosen = np.array(sorted(outcome.place), dtype=np.intp)
-    if not len(chosen):
+    drag = outcome.drag_alone
+    if not len(chosen) or drag is None:
         return found
-    drag = adjust_alone(base.without("diameter"), theta, near=True)
     ways: list[tuple[str, Results, Flags]] = []
     if outcome.campaign.options.mass_from == "adjusted":
         ways.append(("adjusted", outcome.results, outcome.sure[:, 1]))
     ways.append(("drag", results_of(drag, alone=True), is_determined(drag)[:, 1]))
-    sizes = own_sizes(outcome.prepared, np.arange(base.particles, dtype=np.intp))
+    sizes = own_sizes(outcome.prepared, np.arange(drag.model.particles, dtype=np.intp))
     ways.append(("diameter", results_of(drag, alone=True, size=sizes), np.isfinite(sizes.u)))
     for name, index in zip(list(outcome.names), chosen, strict=True):
         for way, results, sure in ways:

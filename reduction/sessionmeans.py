@@ -12,7 +12,7 @@ import pandas as pd
 from numpy.typing import NDArray
 from scipy import sparse
 
-from reduction.charge import ELEMENTARY_CHARGE
+from reduction.units import ELEMENTARY_CHARGE
 
 Array = NDArray[np.floating[Any]]
 Facts = Mapping[str, Mapping[str, Any]]

@@ -97,7 +97,7 @@ def spread_factor(dof: float, *, seed: int, name: str, trials: int) -> Array:
 def _places(trials: int, coverage: float) -> tuple[int, int]:
     """Draws within the interval, and how many lie below it when both tails hold the same number."""
     inside = min(int(coverage * trials + 0.5), trials - 1)
-    return inside, (trials - inside) // 2
+    return inside, (trials - inside + 1) // 2
 
 
 def symmetric_ends(sample: Array, coverage: float) -> tuple[float, float]:

@@ -8,9 +8,17 @@ from dataclasses import dataclass, replace
 import numpy as np
 from scipy import stats
 
-from reduction.adjustment import Adjusted, Model, adjust_alone, adjust_together, normal_equations
+from reduction.adjustment import (
+    Adjusted,
+    Model,
+    adjust_alone,
+    adjust_together,
+    inverse_of,
+    normal_equations,
+    ranks,
+)
 from reduction.agreement import MethodEstimate
-from reduction.fits import UNDETERMINED, MethodFit, drift_asked_for, fit_method
+from reduction.fits import ROUNDING, UNDETERMINED, MethodFit, drift_asked_for, fit_method
 from reduction.methods import (
     DRIFT,
     LN_GAMMA,
@@ -23,6 +31,7 @@ from reduction.methods import (
     Indices,
     Readings,
     linearise,
+    predict,
     with_reynolds,
 )
 from reduction.preparation import Prepared, with_u
@@ -30,6 +39,8 @@ from reduction.slips import Slip, slips_of
 from reduction.starts import Start, starts_of
 
 OUTLIER = 4.0  # standard deviations from its method's fit beyond which a reading is flagged
+POOR_P = 1e-3  # p of chi-square below which a secular log is doubted
+DISTINCT = 0.3  # in ln s, beyond which two solutions differ however wide u is
 DOUBLE = 4.0  # chi-square within which a second solution counts as equally good
 ACTIVE = {"balance": (LN_S,), "height": (LN_S, LN_GAMMA, ORIGIN), "secular": (LN_S, LN_GAMMA), "diameter": (LN_GAMMA,)}
 
@@ -57,10 +68,11 @@ def _provisional(readings: Mapping[str, Readings], unstated: Mapping[str, Flags]
     found = {}
     for name, log in readings.items():
         rough = {"balance": 0.01, "height": 0.05, "secular": 0.01}.get(name, 0.0)
+        least = {"balance": 1e-3, "height": 1e-6, "secular": 1e-3}.get(name, 1.0)
         size = float(np.median(np.abs(log.observed))) if len(log) else 0.0
         if name == "height" and len(log):
             size = float(np.ptp(log.observed))
-        found[name] = with_u(log, np.where(unstated[name], max(rough * size, 1e-300), log.u))
+        found[name] = with_u(log, np.where(unstated[name], max(rough * size, least), log.u))
     return found
 
 
@@ -69,27 +81,23 @@ def fit_session(prepared: Prepared, scatter_policy: str) -> Reduced:
     count = len(prepared.names)
     logs = _provisional(prepared.logs, prepared.unstated)
     model = Model(prepared.setting, logs, np.ones(count), np.zeros(count, bool))
-    flags: list[set[str]] = [set() for _ in range(count)]
-    starts = [starts_of(_no_drift(model), index) for index in range(count)]
-    model = replace(model, sign=np.array([one[0].sign if one else 1.0 for one in starts]))
-    theta = np.array([one[0].theta if one else np.zeros(5) for one in starts]).reshape(count, 5)
     drifting = _drifting(model, prepared)
     model = _with_drift(model, drifting)
-    fits = _fit_methods(model, starts, theta)
+    model, starts, theta = _started(model)
+    fits = _fit_methods(model, theta)
     scatter: dict[str, float] = {}
     if any(mask.any() for mask in prepared.unstated.values()):
         model, scatter = _from_scatter(model, prepared, fits)
-        starts = [starts_of(model, index) for index in range(count)]
-        theta = np.array([one[0].theta if one else np.zeros(5) for one in starts]).reshape(count, 5)
-        fits = _fit_methods(model, starts, theta)
-    for index in range(count):
-        flags[index] |= _method_flags(model, fits, index, scatter)
-    model = _possible(model, fits, starts)
+        model, starts, theta = _started(model)
+        fits = _fit_methods(model, theta)
+        _say_what_lacks_u(prepared, model, fits)
+    flags = [_method_flags(fits, index, scatter) for index in range(count)]
+    model = _possible(model, fits, starts, flags)
     alone, is_open, reasons = _alone(model, starts, theta, flags)
+    alone = _without_impossible_secular(alone, fits, is_open, reasons, flags)
     if scatter_policy == "inflate":
         alone = adjust_alone(_inflated(alone, fits, scatter, flags), alone.theta, near=True)
-    estimates = _method_estimates(alone.model, fits)
-    dof = _alone_dof(alone)
+    dof = alone_dof(alone)
     for index in range(count):
         if not scatter and dof[index] > 0 and stats.chi2.sf(alone.cost[index], dof[index]) < 0.01:
             flags[index].add("chi_square")
@@ -100,11 +108,21 @@ def fit_session(prepared: Prepared, scatter_policy: str) -> Reduced:
     slips = [] if scatter else slips_of(alone, dof, theta)
     for slip in slips:
         flags[slip.particle].add("factor_suspected")
+    estimates = _method_estimates(alone.model, fits)
     return Reduced(prepared, alone.model, starts, fits, scatter, flags, alone, estimates, dof, is_open, reasons, slips)
 
 
-def _no_drift(model: Model) -> Model:
-    return _with_drift(model, np.zeros(model.particles, bool))
+def without_diameter(reduced: Reduced) -> Reduced:
+    """The same with the diameter method out of the adjustment, to be compared with it."""
+    alone = _with_shifts(adjust_alone(reduced.model.without("diameter"), reduced.alone.theta))
+    return replace(reduced, model=alone.model, alone=alone, dof=alone_dof(alone))
+
+
+def _started(model: Model) -> tuple[Model, list[list[Start]], Array]:
+    """Starts of every particle, best first, and the model and unknowns that go with the best."""
+    starts = [starts_of(model, index) for index in range(model.particles)]
+    theta = np.array([one[0].theta if one else np.zeros(5) for one in starts]).reshape(model.particles, 5)
+    return replace(model, sign=np.array([one[0].sign if one else 1.0 for one in starts])), starts, theta
 
 
 def _with_drift(model: Model, drifting: Flags) -> Model:
@@ -127,9 +145,10 @@ def _drifting(model: Model, prepared: Prepared) -> Flags:
     return found
 
 
-def _fit_methods(model: Model, starts: list[list[Start]], theta: Array) -> dict[str, list[MethodFit]]:
-    """Every method of every particle by itself, from where the scan of all its logs begins."""
+def _fit_methods(model: Model, theta: Array) -> dict[str, list[MethodFit]]:
+    """Every method of every particle by itself, from theta on; a drift found in the balance applies to every log."""
     fits: dict[str, list[MethodFit]] = {}
+    theta = theta.copy()
     for name in LOGS:
         if name not in model.logs:
             continue
@@ -141,7 +160,20 @@ def _fit_methods(model: Model, starts: list[list[Start]], theta: Array) -> dict[
                 name, model.setting.of(index), log.of(index), theta[index], float(model.sign[index]), active
             )
             fits[name].append(_qualified(fit, log.of(index)))
+            if DRIFT in active and np.isfinite(fit.theta[DRIFT]):
+                theta[index, DRIFT] = fit.theta[DRIFT]
     return fits
+
+
+def _say_what_lacks_u(prepared: Prepared, model: Model, fits: dict[str, list[MethodFit]]) -> None:
+    """Give a reason to the methods whose readings have no u, stated or from scatter."""
+    for name, before in prepared.logs.items():
+        after = model.logs[name]
+        for index, fit in enumerate(fits[name]):
+            count = int((before.particle == index).sum())
+            if count and not (after.particle == index).any():
+                reason = "no uncertainty is stated, and there is no scatter to take one from"
+                fits[name][index] = replace(fit, status="few_readings", reason=reason, readings=count)
 
 
 def _qualified(fit: MethodFit, log: Readings) -> MethodFit:
@@ -181,7 +213,8 @@ def _from_scatter(
                 u = log.u[log.particle == index][own]
                 total += float(((fit.residual[own] * u) ** 2).sum())
                 dof += fit.dof * own.sum() / len(own)
-        if dof < 1.0 or total == 0.0:
+        size = float(np.abs(log.observed).max())
+        if dof < 1.0 or total <= dof * (ROUNDING * size) ** 2:
             logs[name] = log.select(~missing)
             continue
         logs[name] = with_u(log, np.where(missing, np.sqrt(total / dof), log.u))
@@ -189,17 +222,13 @@ def _from_scatter(
     return replace(model, logs=logs), scatter
 
 
-def _method_flags(
-    model: Model, fits: Mapping[str, list[MethodFit]], index: int, scatter: Mapping[str, float]
-) -> set[str]:
+def _method_flags(fits: Mapping[str, list[MethodFit]], index: int, scatter: Mapping[str, float]) -> set[str]:
     found = set()
     for name, own in fits.items():
         fit = own[index]
-        if fit.status == "no_oscillation":
-            found.add("no_oscillation")
-        elif fit.status == "unstable":
-            found.add("unstable")
-        if name in scatter and fit.readings:
+        if fit.status in ("no_oscillation", "unstable"):
+            found.add(fit.status)
+        if name in scatter and fit.status not in ("few_readings", "no_oscillation", "unstable"):
             found.add("u_from_scatter")
     return found
 
@@ -227,19 +256,80 @@ def _inflated(
     return replace(alone.model, logs=logs)
 
 
-def _possible(model: Model, fits: Mapping[str, list[MethodFit]], starts: list[list[Start]]) -> Model:
+def _left_out(fits: dict[str, list[MethodFit]], name: str, index: int, flags: list[set[str]]) -> None:
+    """Say of one method that its readings ask for a motion the particle cannot have."""
+    status = "no_oscillation" if name == "secular" else "unstable"
+    reason = {
+        "no_oscillation": "no secular oscillation exists at the particle's charge and drag; the log is left out",
+        "unstable": "the readings lie outside the stable region at the particle's charge and drag; the log is left out",
+    }[status]
+    fits[name][index] = replace(fits[name][index], status=status, reason=reason, determined=(False, False))
+    flags[index].add(status)
+
+
+def _possible(
+    model: Model, fits: dict[str, list[MethodFit]], starts: list[list[Start]], flags: list[set[str]]
+) -> Model:
     """Without the logs whose readings no motion of the particle can give, and particles nothing can be said of."""
     logs = {}
     for name, log in model.logs.items():
-        bad = [
-            index
-            for index, fit in enumerate(fits[name])
-            if fit.status in ("no_oscillation", "unstable")
-            or not starts[index]
-            or (starts[index] and name in starts[index][0].impossible)
-        ]
+        bad = []
+        for index, fit in enumerate(fits[name]):
+            impossible = bool(starts[index]) and name in starts[index][0].impossible
+            if fit.status in ("no_oscillation", "unstable") or impossible:
+                if impossible:
+                    _left_out(fits, name, index, flags)
+                bad.append(index)
+            elif not starts[index]:
+                bad.append(index)
         logs[name] = log.select(~np.isin(log.particle, bad))
     return replace(model, logs=logs)
+
+
+def _without_impossible_secular(
+    alone: Adjusted, fits: dict[str, list[MethodFit]], is_open: Flags, reasons: list[str], flags: list[set[str]]
+) -> Adjusted:
+    """Leave out secular logs that only a far-off compromise can accommodate.
+
+    Where all logs together fit badly, the particle is adjusted without its secular log; if the motion then has no
+    secular oscillation at the drives logged, the log cannot be what it says.
+    """
+    model = alone.model
+    secular = model.logs.get("secular")
+    if secular is None:
+        return alone
+    logged = np.isin(np.arange(model.particles), secular.particle)
+    other = np.zeros(model.particles, bool)
+    for name in ("balance", "height"):
+        if name in model.logs:
+            other |= np.isin(np.arange(model.particles), model.logs[name].particle)
+    dof = alone_dof(alone)
+    bad = ~alone.settled | (stats.chi2.sf(alone.cost, np.maximum(dof, 1)) < POOR_P)
+    doubtful = np.flatnonzero(logged & other & bad).astype(np.intp)
+    if not len(doubtful):
+        return alone
+    part = model.subset(doubtful).without("secular")
+    part, starts, theta = _started(part)
+    rest = adjust_alone(part, theta)
+    asked = {"secular": model.subset(doubtful).logs["secular"]}
+    readings = predict(part.setting, asked, rest.theta[None], part.sign, rest.xi[None])["secular"].reading[0]
+    missing = np.bincount(asked["secular"].particle, ~np.isfinite(readings), len(doubtful)) > 0
+    gone = [int(index) for place, index in enumerate(doubtful) if missing[place] and rest.settled[place]]
+    if not gone:
+        return alone
+    theta_all, sign = alone.theta.copy(), model.sign.copy()
+    for place, index in enumerate(doubtful.tolist()):
+        if index in gone:
+            theta_all[index], sign[index] = rest.theta[place], part.sign[place]
+            is_open[index], reasons[index] = False, ""
+            flags[index].discard("two_solutions")
+            _left_out(fits, "secular", index, flags)
+    kept = secular.select(~np.isin(secular.particle, gone))
+    again = _with_shifts(adjust_alone(replace(model, sign=sign, logs={**model.logs, "secular": kept}), theta_all))
+    for index in gone:
+        if not again.settled[index]:
+            is_open[index], reasons[index] = True, "the adjustment did not settle"
+    return again
 
 
 def _alone(
@@ -264,9 +354,11 @@ def _alone(
     if (sign != best.model.sign).any() or (chosen != best.theta).any():
         best = _with_shifts(adjust_alone(replace(model, sign=sign), chosen))
     u = np.sqrt(np.clip(np.einsum("nii->ni", best.covariance), 0.0, None))
+    ranked = ranks(best)[1]
     for index in range(count):
         for rival_cost, rival_sign, rival in rivals[index]:
-            same = rival_sign == sign[index] and abs(rival[LN_S] - best.theta[index, LN_S]) < 5.0 * u[index, LN_S]
+            apart = min(5.0 * u[index, LN_S], DISTINCT)
+            same = rival_sign == sign[index] and abs(rival[LN_S] - best.theta[index, LN_S]) < apart
             if not same and rival_cost < best.cost[index] + DOUBLE:
                 is_open[index], reasons[index] = True, "two solutions fit the readings equally well"
                 flags[index].add("two_solutions")
@@ -279,6 +371,8 @@ def _alone(
             flags[index].add("sign_undetermined")
         if not starts[index]:
             is_open[index], reasons[index] = True, "no log says anything of its charge-to-mass ratio"
+        elif not ranked[index, LN_S]:
+            is_open[index], reasons[index] = True, reasons[index] or "the readings leave the charge-to-mass ratio open"
         elif not best.settled[index] and not is_open[index]:
             is_open[index], reasons[index] = True, "the adjustment did not settle"
     return best, is_open, reasons
@@ -293,15 +387,10 @@ def _with_shifts(adjusted: Adjusted) -> Adjusted:
     return adjust_alone(replace(model, logs={**model.logs, "height": height}), adjusted.theta, near=True)
 
 
-def _alone_dof(alone: Adjusted) -> Indices:
-    """Readings less free unknowns of each particle; an unknown that only its prior fixes takes none."""
+def alone_dof(alone: Adjusted) -> Indices:
+    """Readings less the unknowns they fix of each particle adjusted alone, (N,)."""
     readings = sum((normal.readings for normal in alone.normals.values()), np.zeros(alone.model.particles, np.intp))
-    free = alone.model.active.copy()
-    free[:, SHAPE] = False
-    u = np.sqrt(np.clip(np.einsum("nii->ni", alone.covariance), 0.0, None))
-    free[:, LN_GAMMA] &= u[:, LN_GAMMA] < 100.0
-    free[:, LN_S] &= u[:, LN_S] < 100.0
-    left: Indices = np.maximum(readings - free.sum(axis=1), 0)
+    left: Indices = np.maximum(readings - ranks(alone)[0], 0)
     return left
 
 
@@ -329,19 +418,21 @@ def _method_estimates(model: Model, fits: Mapping[str, list[MethodFit]]) -> list
         diagonal = np.where(active, 0.0, 1.0) + np.where(active & (np.arange(5) == SHAPE), 1.0, 0.0)
         diagonal[:, [LN_S, LN_GAMMA]] += 1e-8
         square[:, np.arange(5), np.arange(5)] += diagonal
-        inverse = np.linalg.inv(square)
+        inverse = inverse_of(square)
         response = -inverse @ normal.cross
         for place, index in enumerate(usable):
             fit = fits[name][index]
             sign = part.sign[place] if fit.sign else 1.0
             value = np.array([sign * np.exp(theta[place, LN_S]), np.exp(theta[place, LN_GAMMA])])
             private = np.sqrt(np.diag(inverse[place])[[LN_S, LN_GAMMA]])
+            spread = private**2 + (response[place][[LN_S, LN_GAMMA]] ** 2).sum(axis=1)
+            known = np.array(fit.determined, dtype=bool) & (np.sqrt(spread) <= UNDETERMINED)
             origin = inverse[place, ORIGIN, ORIGIN] + (response[place, ORIGIN] ** 2).sum()
             found[index][name] = MethodEstimate(
                 value,
                 private,
                 response[place][[LN_S, LN_GAMMA]],
-                np.array(fit.determined, dtype=bool),
+                known,
                 bool(fit.sign),
                 float(np.sqrt(origin)),
             )
@@ -361,7 +452,7 @@ def adjust_session(reduced: Reduced, adjust: str) -> tuple[Adjusted, Indices]:
 
 
 def is_determined(adjusted: Adjusted) -> Flags:
-    """Whether charge-to-mass ratio and drag rate of each particle are determined: u of the logarithm at most 0.5."""
+    """Whether charge-to-mass ratio and drag rate of each particle are determined, (N, 2): rank, and u(ln) <= 0.5."""
     u = np.sqrt(np.clip(np.einsum("nii->ni", adjusted.covariance), 0.0, None))
-    sure: Flags = (u[:, [LN_S, LN_GAMMA]] <= UNDETERMINED) & adjusted.settled[:, None]
-    return sure
+    sure: Flags = (u <= UNDETERMINED) & ranks(adjusted)[1] & adjusted.settled[:, None]
+    return sure[:, [LN_S, LN_GAMMA]]

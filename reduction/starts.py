@@ -15,6 +15,7 @@ from reduction.methods import (
     LN_S,
     ORIGIN,
     Array,
+    Flags,
     Readings,
     Setting,
     effective_u,
@@ -140,11 +141,10 @@ def _scan(
     return theta, total, impossible
 
 
-def _beyond_branch(setting: Setting, log: Readings, theta: Array, sign: Array, xi: Array) -> Array:
+def _beyond_branch(setting: Setting, log: Readings, theta: Array, sign: Array, xi: Array) -> Flags:
     """Readings whose drive lies beyond the maximum of K, where the first stable branch ends."""
     around = surroundings(setting, xi)
     particle = particle_properties(setting, around, theta[None], sign)
     scaled = scaled_motion(setting, around, particle, theta[None], log)
     drive, drag, added, history = (one[0] for one in (scaled.drive, scaled.drag, scaled.added_mass, scaled.history))
-    beyond: Array = np.abs(drive) > motion.stiffness_maximum(drag, added, history)
-    return beyond
+    return ~motion.on_branch(drive, drag, added, history)

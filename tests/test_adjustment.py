@@ -36,12 +36,10 @@ def reduced(request, tmp_path_factory):
 
 
 def dense(adjusted: Adjusted):
-    """Joint least squares of all private unknowns and shared inputs by scipy, with the weights of the adjustment."""
+    """Joint least squares of all private unknowns and shared inputs by scipy, effective variance included."""
     model = adjusted.model
     free = np.argwhere(model.active)
     width = adjusted.xi.shape[1]
-    u = {name: line.u for name, line in adjusted.lines.items()}
-
     scale = np.array([1.0, 1.0, 1e-5, 1e-6, 1.0])[free[:, 1]]
 
     def unpacked(values):
@@ -52,7 +50,7 @@ def dense(adjusted: Adjusted):
     def residual(values):
         theta, xi = unpacked(values)
         parts = [
-            (model.logs[name].observed - prediction.reading[0]) / u[name]
+            (model.logs[name].observed - prediction.reading[0]) / effective_u(model.logs[name], prediction)
             for name, prediction in predict(model.setting, model.logs, theta[None], model.sign, xi[None, None]).items()
         ]
         return np.concatenate([*parts, xi])

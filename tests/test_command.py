@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import re
+import shlex
 import subprocess
 import sys
 from pathlib import Path
@@ -136,6 +137,6 @@ def test_interruption_ends_with_130(monkeypatch: pytest.MonkeyPatch, capsys: pyt
 
 
 def test_output_cut_off_by_its_reader_is_no_error() -> None:
-    command = f"{sys.executable} -m reduction.command check data_example | head -c 1"
+    command = f"{shlex.quote(sys.executable)} -m reduction.command check data_example | head -c 1"
     ran = subprocess.run(["bash", "-c", command], capture_output=True, text=True, check=False, cwd=ROOT, env=os.environ)
     assert ran.stderr == ""

@@ -20,9 +20,9 @@ textfile contract yamlfile quantity entries logged sessionfile csvfile heads wor
 air gravity drag recurrence floquet secular resonance motion
 settings schemas logs check newcampaign
 inputs methods fits adjustment charge starts budget agreement preparation slips solution strain outcome window sanity
-shapes streams noise propagation refits montecarlo validation
-tables multiplicity randomeffects sessionmeans groupmeans pairs ranks transitivity trends comparison
-groups intrinsic histogram planning comparisonwords
+shapes noise propagation refits montecarlo validation
+tables correlated multiplicity randomeffects sessionmeans groupmeans pairs ranks transitivity trends comparison
+groups unseen intrinsic histogram planning comparisonwords
 records resultrows readingrows curves sessionfacts session
 simulationplan simulationtruth simulationreadings simulationfiles simulationexample simulation
 typeset sheets figurestyle panels figures campaignfigures sessiontables campaigntables sessionreport campaignreport

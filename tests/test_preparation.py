@@ -119,15 +119,12 @@ def test_a_lot_unused_leaves_only_own_diameters(tmp_path):
     assert prepared(tmp_path, files).logs["diameter"].particle.tolist() == [0]
 
 
-@pytest.mark.xfail(strict=True, reason="an own diameter without its u is dropped for the lot's, and nothing says so")
-def test_an_own_diameter_without_u_is_never_dropped_unsaid(tmp_path):
-    files = {SESSION: STATED, PARTICLES: "particle,diameter_um\np01,21.2\n"}
-    campaign, logs, faults = check(tmp_path, files)
-    if list(faults):  # refusing it is one honest answer
-        assert any("u_diameter" in str(fault) for fault in faults)
-        return
-    found = prepare(campaign, campaign.sessions["s001"], logs["s001"])
-    assert any(log == "particles" and name == "p01" for log, _, name, _ in found.left_out)
+def test_an_own_diameter_without_u_counts_as_exact(tmp_path):
+    log = prepared(tmp_path, {PARTICLES: "particle,diameter_um\np01,21.2\n"}).logs["diameter"]
+    own = log.particle == 0
+    assert not log.lot[own].any()
+    np.testing.assert_allclose(log.observed[own], 21.2e-6)
+    assert log.u[own] < 1e-5 * log.observed[own]
 
 
 def test_species_and_material_of_a_particle_go_before_the_sessions(tmp_path):

@@ -37,6 +37,29 @@ def test_refitted_trials_spread_about_the_truth_as_the_first_order_says(tmp_path
     assert logs.std(axis=0)[known] / u[known] == pytest.approx(1.0, abs=4.5 / math.sqrt(1000))
 
 
+@pytest.mark.parametrize("source", ["dc_voltage", "shape_factor_spread"])
+def test_refits_hold_the_noise_of_the_dc_voltage_and_the_spread_of_the_shape_factor(light, source):
+    model = smaller(light.alone.model, light.alone.theta, 0.2)
+    model = replace(model, setting=smaller(model, light.alone.theta, 0.2).setting)  # the inputs are not to dominate
+    quiet = replace(model.logs["height"], u=0.25 * model.logs["height"].u)
+    model = replace(model, logs={**model.logs, "height": quiet})
+    first = results_of(adjust_alone(model, light.alone.theta), alone=True)
+    if source == "dc_voltage":
+        # small against the span of voltages at one drive: beyond, noise in the abscissa biases any least squares
+        height = replace(quiet, u_voltage=np.full(len(quiet), 0.05))
+        model = replace(model, logs={**model.logs, "height": height})
+    else:
+        model = replace(model, setting=replace(model.setting, shape_spread=np.full(model.particles, 0.03)))
+    results = results_of(adjust_alone(model, light.alone.theta), alone=True)
+    column = {"dc_voltage": 1, "shape_factor_spread": 3}[source]
+    assert results.variance[0, column] > 2.0 * first.variance[0, column]
+    logs = refits_alone(results.adjusted, 0, Trials(model.setting, "s001", [light.prepared.names[0]], {}, 500, 1))
+    logs, u = logs[np.isfinite(logs[:, 0])], np.sqrt(results.variance[0])
+    assert len(logs) > 400  # readings this exact leave some trials at the limit of rounding
+    assert logs.mean(axis=0) / u == pytest.approx(0.0, abs=4.5 / math.sqrt(500))
+    assert logs.std(axis=0) / u == pytest.approx(1.0, abs=4.5 / math.sqrt(1000))
+
+
 def test_refits_do_not_depend_on_the_batches(light, monkeypatch):
     trials = Trials(light.alone.model.setting, "s001", [light.prepared.names[1]], {}, 60, 1)
     whole = refits_alone(light.alone, 1, trials)

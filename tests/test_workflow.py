@@ -338,6 +338,28 @@ def test_command_ends_with_what_moved_and_why(bench: Bench) -> None:
     assert "no number moved" in bench.motescale("run", str(bench.campaign), str(bench.results)).stdout
 
 
+@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
+def test_command_that_is_interrupted_ends_its_workflow_and_goes_on_later(
+    bench: Bench, finished: Bench, number: signal.Signals
+) -> None:
+    shutil.rmtree(bench.results)
+    bench.calls.write_text("")
+    command = [sys.executable, "-m", "reduction.command", "run", str(bench.campaign), str(bench.results)]
+    where = {"PYTHONPATH": str(bench.program), "PYTHONSAFEPATH": "1", "STANDIN_SECONDS": "0.3"}
+    going = subprocess.Popen(
+        command, env=bench.environment | where, cwd=bench.campaign.parent, stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE, text=True,
+    )  # fmt: skip
+    bench.wait_for("reduce s03")
+    going.send_signal(number)
+    _, error = going.communicate(timeout=60)
+    assert going.returncode == 130
+    assert "the same command goes on from there" in error
+    assert "Traceback" not in error
+    good(bench.motescale("run", str(bench.campaign), str(bench.results)))
+    assert contents(bench.results) == contents(finished.results)
+
+
 def test_command_passes_on_what_the_workflow_refuses(bench: Bench, tmp_path: Path) -> None:
     (bench.campaign / "sessions" / "s05" / "balance.csv").write_text("particle,balance_voltage_V\n1,wrong\n")
     for loudness in ([], ["--quiet"]):
