@@ -15,7 +15,7 @@ SLIP_C = 0.997
 SLIP_RELATIVE_U = 0.03
 """Relative standard uncertainty of C - 1: the sets of Davies (1945) and of Allen and Raabe (1985) lie within 6 %."""
 
-NEWTON_STEPS = 10
+NEWTON_STEPS = 7
 
 
 def slip_correction(diameter: ArrayLike, mean_free_path: ArrayLike, slip_factor: ArrayLike = 1.0) -> Values:

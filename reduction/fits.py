@@ -117,7 +117,7 @@ def least_squares(
         return found
 
     minimizer = lmfit.Minimizer(scaled, parameters, scale_covar=False, calc_covar=False)
-    outcome = minimizer.leastsq(Dfun=scaled_slopes, col_deriv=0, ftol=1e-14, xtol=1e-12, gtol=0.0, max_nfev=2000)
+    outcome = minimizer.leastsq(Dfun=scaled_slopes, col_deriv=0, ftol=1e-13, xtol=1e-11, gtol=0.0, max_nfev=2000)
     values = np.array([outcome.params[name].value for name in names]) * size
     final = residual(values)
     covariance, determined = _covariance(slopes(values), size)
@@ -251,7 +251,14 @@ def _fit_private(method: str, setting: Setting, log: Readings, theta: Array, sig
 
     def jacobian(values: Array) -> Array:
         line = linearise(
-            setting, {method: log}, filled(values)[None], np.array([sign]), nothing[0], private=index, shared=False
+            setting,
+            {method: log},
+            filled(values)[None],
+            np.array([sign]),
+            nothing[0],
+            private=index,
+            shared=False,
+            around=trial.around,
         )
         slopes = -line[method].private[:, index]
         return np.where(np.isfinite(slopes), slopes, 0.0)

@@ -336,10 +336,15 @@ PREDICT = {
 
 
 def predict(
-    setting: Setting, logs: Mapping[str, Readings], theta: Array, sign: Array, xi: Array
+    setting: Setting,
+    logs: Mapping[str, Readings],
+    theta: Array,
+    sign: Array,
+    xi: Array,
+    around: Surroundings | None = None,
 ) -> dict[str, Prediction]:
-    """What every log should read; theta (P, N, 5), sign (N,), xi (P, N or 1, K)."""
-    around = surroundings(setting, xi)
+    """What every log should read; theta (P, N, 5), sign (N,), xi (P, N or 1, K), `around` where it is known already."""
+    around = surroundings(setting, xi) if around is None else around
     particle = particle_properties(setting, around, theta, sign)
     return {name: PREDICT[name](setting, around, particle, theta, log) for name, log in logs.items() if len(log)}
 
@@ -364,10 +369,12 @@ def linearise(
     *,
     private: Sequence[int] = range(5),
     shared: bool = True,
+    around: Surroundings | None = None,
 ) -> dict[str, Linearised]:
     """Predictions and central-difference Jacobians at theta (N, 5) and xi (N or 1, K), for all logs at once.
 
     Only the given private unknowns are varied, and the shared inputs only if `shared`; other derivatives are 0.
+    Without `shared`, `around` may hold the surroundings at xi.
     """
     varied = [*private, *(5 + column for column in range(xi.shape[1] if shared else 0))]
     steps = np.full(5 + xi.shape[1], STEP)
@@ -381,10 +388,10 @@ def linearise(
     base = {}
     noisy = {name: log for name, log in logs.items() if (log.u_voltage > 0.0).any()}
     if noisy:
-        base = predict(setting, noisy, theta[None], sign, xi[None])
+        base = predict(setting, noisy, theta[None], sign, xi[None], around)
         logs = {**logs, **{name: at_likely_voltage(log, base[name]) for name, log in noisy.items()}}
     found = {}
-    for name, prediction in predict(setting, logs, thetas, sign, xis).items():
+    for name, prediction in predict(setting, logs, thetas, sign, xis, around).items():
         log, reading = logs[name], prediction.reading
         u = effective_u(log, prediction)
         slopes = np.zeros((len(log), len(steps)))

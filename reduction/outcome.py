@@ -13,12 +13,15 @@ from reduction.adjustment import Adjusted, adjust_alone
 from reduction.budget import OwnSize, Results, results_of
 from reduction.logs import Logs
 from reduction.methods import Array, Flags, Indices
+from reduction.montecarlo import result_intervals
 from reduction.preparation import Prepared
 from reduction.settings import Campaign, Session
 from reduction.solution import Reduced, is_determined
 from reduction.strain import Strain, strain_of
 
 S, GAMMA, DIAMETER, MASS, CHARGE, DENSITY = range(6)  # places of the results, in the order of budget.RESULTS
+
+DRAWN = (DIAMETER, MASS, CHARGE, DENSITY)  # results whose intervals come from Monte Carlo
 
 
 @dataclass(frozen=True)
@@ -63,6 +66,21 @@ def outcome_of(
     results = results_of(adjusted, alone=alone, size=size)
     dof = budget.effective_dof(results, reduced.scatter)
     low, high = budget.interval(results, dof, options.coverage_probability)
+    drawn = result_intervals(
+        results,
+        session=session.id,
+        names=names,
+        log_dof=reduced.scatter,
+        trials=options.monte_carlo_trials,
+        seed=options.seed,
+        coverage=options.coverage_probability,
+        size=size,
+        pooled=options.adjust == "campaign",
+    )
+    for result in DRAWN:  # these depend on the size, whose powers are skewed
+        known = np.isfinite(drawn.low[:, result]) & np.isfinite(drawn.high[:, result])
+        low[:, result] = np.where(known, drawn.low[:, result], low[:, result])
+        high[:, result] = np.where(known, drawn.high[:, result], high[:, result])
     sure = is_determined(adjusted)
     drag_alone = adjust_alone(reduced.alone.model.without("diameter"), reduced.alone.theta, near=True)
     _flag_sizes_from_lot(reduced, drag_alone)

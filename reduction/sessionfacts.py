@@ -10,11 +10,12 @@ from reduction.budget import Results, results_of
 from reduction.charge import electrons
 from reduction.curves import curves_of
 from reduction.methods import Flags
-from reduction.outcome import CHARGE, DIAMETER, MASS, Outcome, own_sizes
+from reduction.outcome import CHARGE, DIAMETER, GAMMA, MASS, Outcome, own_sizes
 from reduction.preparation import EXACT
 from reduction.quantity import shorthand
 from reduction.resultrows import adjusted_inputs
 from reduction.solution import is_determined
+from reduction.window import lost_record, window_record
 
 
 def facts(outcome: Outcome, sanity: list[tuple[int, str, str]]) -> dict[str, Any]:
@@ -79,6 +80,10 @@ def facts(outcome: Outcome, sanity: list[tuple[int, str, str]]) -> dict[str, Any
             "adjusted_u": adjusted[1],
         },
         "masses": _masses(outcome),
+        "window": window_record(
+            session, outcome.campaign.traps[session.trap], outcome.logs, _median_drag_rate(outcome)
+        ),
+        "lost": lost_record(session, outcome.logs),
         "curves": curves_of(
             outcome.prepared,
             outcome.adjusted,
@@ -86,6 +91,12 @@ def facts(outcome: Outcome, sanity: list[tuple[int, str, str]]) -> dict[str, Any
             [place for place in range(len(outcome.names)) if outcome.sure[place, 0]],
         ),
     }
+
+
+def _median_drag_rate(outcome: Outcome) -> float:
+    """Median of the drag rates that are determined [1/s]; NaN where none is."""
+    known = outcome.results.value[outcome.sure[:, 1], GAMMA]
+    return float(np.median(known)) if len(known) else float("nan")
 
 
 def _exact_diameters(outcome: Outcome) -> list[list[str]]:
@@ -148,6 +159,9 @@ def _masses(outcome: Outcome) -> dict[str, list[dict[str, Any]]]:
         for way, results, sure in ways:
             row = outcome.place[int(index)] if results is outcome.results else int(index)
             value, u = results.value[row], results.u[row]
+            own = results.private[row, CHARGE, CHARGE]
+            if results.alone:  # its readings' noise through the shared inputs is then shared with no other particle
+                own = own + (results.by_readings[row, CHARGE] ** 2).sum()
             if sure[row] and outcome.sure[outcome.place[int(index)], 0] and np.isfinite(value[MASS]):
                 found[name].append(
                     {
@@ -158,6 +172,7 @@ def _masses(outcome: Outcome) -> dict[str, list[dict[str, Any]]]:
                         "u_mass_kg": u[MASS],
                         "charge_e": float(electrons(value[CHARGE])),
                         "u_charge_e": float(electrons(u[CHARGE])),
+                        "u_own_charge_e": float(electrons(abs(value[CHARGE]) * np.sqrt(own))),
                     }
                 )
     return found

@@ -35,6 +35,8 @@ QUANTITIES = {
 }
 
 JOINT = " / "
+PARTICLE_WORDS = ("species", "charged_with")
+SESSION_WORDS = ("species", "charged_with", "trap", "date", "operator")
 
 LEFT_OUT = {
     "excluded": "excluded",
@@ -97,12 +99,16 @@ class Cells:
 def group_word(row: Mapping[str, Any], fact: Mapping[str, Any], by: str | tuple[str, ...]) -> str:
     """Group of one particle: its own word, else its session's, else the session's attribute of that name.
 
+    A word that is none of `SESSION_WORDS` is an attribute, whatever else the session's facts hold under that name.
+
     With several words asked for they are joined by `JOINT`; "" where one is missing.
     """
     if not isinstance(by, str):
         words = [group_word(row, fact, one) for one in by]
         return JOINT.join(words) if all(words) else ""
-    for word in (row.get(by, ""), fact.get(by, ""), (fact.get("attributes") or {}).get(by, "")):
+    own = row.get(by, "") if by in PARTICLE_WORDS else ""
+    session = fact.get(by, "") if by in SESSION_WORDS else ""
+    for word in (own, session, (fact.get("attributes") or {}).get(by, "")):
         if isinstance(word, str) and word:
             return word
         if isinstance(word, int | float) and not isinstance(word, bool) and math.isfinite(word):
