@@ -24,5 +24,6 @@ rule all:
 include: "workflow/rules/reduce.smk"  # session by session: logs -> a record of tables and facts
 include: "workflow/rules/adjust.smk"  # where asked for: all sessions together
 include: "workflow/rules/tables.smk"  # records -> the campaign's tables, run.json
+include: "workflow/rules/comparison.smk"  # the campaign's tables -> which group charges more, histograms of charge
 include: "workflow/rules/reports.smk"  # records -> the sessions' reports, the campaign's report
 include: "workflow/rules/tidy.smk"  # last: nothing stays of sessions that are gone

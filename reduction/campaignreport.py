@@ -7,12 +7,9 @@ from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
-import pandas as pd
-
-from reduction import campaignfigures, figures, figurestyle, records, tables
+from reduction import campaignfigures, comparisonpages, comparisonreport, figurestyle, records, tables
 from reduction.campaigntables import (
     NOT_TAKEN,
-    answer,
     exact_table,
     input_table,
     left_out_table,
@@ -21,24 +18,15 @@ from reduction.campaigntables import (
     remark_table,
     settings_table,
 )
-from reduction.groups import SHARED_SCOPES, GroupResult, by_group
 from reduction.quantity import QuantityError, read_quantity
 from reduction.sheets import rows_of
-from reduction.typeset import (
-    NONE,
-    common_power,
-    foreign,
-    power_of_ten,
-    significant,
-    visible,
-)
-from reduction.units import ELEMENTARY_CHARGE
+from reduction.typeset import NONE, foreign, significant, visible
 from reduction.wholefile import read_json
-from reduction.wording import CAUTIONS, counted, input_words, joined
+from reduction.wording import CAUTIONS, counted, input_words
 
 Row = dict[str, Any]
-_BY_WORDS = {"charged_with": "what the particles were charged with"}
-FIGURES = ("agreement", "charge", "charge_to_mass", "sessions_in_time")
+FIGURES = ("agreement", "comparison", "sessions_in_time")  # whose numbers have a file of their own
+_ELSEWHERE = {"differences": "contrasts.csv", "ranks": "comparison.csv", "trends": "session_means.csv"}
 _MOVED = 2.0  # in units of the stated u: beyond, an adjusted input is worth a remark
 
 
@@ -57,17 +45,15 @@ def content(
         if facts[name].get("status") not in NOT_TAKEN
         for row in rows_of(tables.read_table(Path(folder) / "inputs.csv"))
     ]
-    coverage = float(settings.get("coverage_probability", 0.95))
-    by = str((settings.get("compare") or {}).get("by", "charged_with"))
-    group_of = {(p["session"], p["particle"]): visible(str(p.get(by) or p["charged_with"] or NONE)) for p in particles}
-    components = tables.read_table(results / "components.csv")
-    taken = [p for p in particles if p["status"] != "excluded"]
-    ratio = by_group(taken, group_of, "charge_to_mass_C_per_kg", coverage=coverage,
-                     components=_shared(components, "charge_to_mass", 1.0))  # fmt: skip
-    charge = by_group(taken, group_of, "charge_e", coverage=coverage,
-                      components=_shared(components, "charge", 1 / ELEMENTARY_CHARGE))  # fmt: skip
+    pages = comparisonpages.read_pages(results)
+    group_of = comparisonpages.group_of(particles, facts, str(pages.words["by"]))
     in_time = _in_time(facts, agreement)
-    drawings = _drawings(particles, group_of, ratio, charge, in_time, agreement)
+    with figurestyle.styled():
+        drawings = comparisonreport.drawings(pages, particles, facts)
+        made = {"sessions_in_time": campaignfigures.sessions_in_time(in_time),
+                "agreement": campaignfigures.agreement(agreement)}  # fmt: skip
+        drawings |= {name: drawing for name, drawing in made.items() if drawing}
+        charges = comparisonreport.charge_drawings(pages)
     left_out = left_out_table(run, facts, particles)
     plain_title = visible(str(title or settings.get("title") or ""))
     title = foreign(plain_title)
@@ -81,13 +67,11 @@ def content(
         "digest": digest,
         "digest_word": "Run",
         "facts": _facts(facts, particles, dates),
-        "answer": answer(ratio, charge, coverage),
-        "answer_words": _answer_words(by, coverage),
-        "trust": _trust(particles, agreement, inputs, ratio),
+        "comparison": comparisonreport.content(pages),
+        "charge_figures": [[foreign(name), comparisonreport.set_drawing(drawing, "")] for name, drawing in charges],
+        "trust": _trust(particles, agreement, inputs),
         "left_out": left_out,
         "figures": {name: _set(drawing, name) for name, drawing in drawings.items()},
-        "ratio_words": _caption(ratio),
-        "charge_words": _caption(charge),
         "agreement_words": "One mark per particle; outside the grey band two methods disagree by more than twice the "
         "standard uncertainty of their difference.",
         "inputs": input_table(inputs),
@@ -100,17 +84,6 @@ def content(
         "cautions": [list(words) for words in CAUTIONS],
     }
     return doc, drawings
-
-
-def _shared(components: pd.DataFrame, result: str, factor: float) -> dict[tuple[str, str], dict[str, float]]:
-    """Signed components of one result that sessions have in common, by particle."""
-    chosen = components[(components["result"] == result) & components["scope"].isin(sorted(SHARED_SCOPES))]
-    out: dict[tuple[str, str], dict[str, float]] = {}
-    for session, particle, name, component in zip(
-        chosen["session"], chosen["particle"], chosen["input"], chosen["component"], strict=True
-    ):
-        out.setdefault((session, particle), {})[name] = factor * component
-    return out
 
 
 def _in_time(facts: Mapping[str, Row], agreement: Sequence[Row]) -> list[Row]:
@@ -152,51 +125,9 @@ def _read(value: object) -> tuple[float, float]:
     return read.estimate, read.u
 
 
-def _answer_words(by: str, coverage: float) -> str:
-    return (
-        f"Grouped by {_BY_WORDS.get(by, by.replace('_', ' '))}. Mean of session means, with the interval of "
-        f"{100 * coverage:g} % coverage. The unit is the session, not the particle; what sessions share (trap, "
-        "species, instruments, formulas) is in the interval and does not shrink with more of them."
-    )
-
-
-def _drawings(
-    particles: Sequence[Row], group_of: Mapping[tuple[str, str], str], ratio: Sequence[GroupResult],
-    charge: Sequence[GroupResult], in_time: Sequence[Row], agreement: Sequence[Row],
-) -> dict[str, figurestyle.Drawing]:  # fmt: skip
-    with figurestyle.styled():
-        power = common_power([p["charge_to_mass_C_per_kg"] for p in particles])
-        made = {
-            "charge_to_mass": campaignfigures.by_group(
-                "charge-to-mass ratio", f"({power_of_ten(power)} C kg⁻¹)" if power else "(C kg⁻¹)", 10.0**-power, ratio,
-                particles, group_of, "charge_to_mass_C_per_kg", "u_charge_to_mass_C_per_kg"),
-            "charge": _charge_figure(particles, group_of, charge),
-            "sessions_in_time": campaignfigures.sessions_in_time(in_time),
-            "agreement": campaignfigures.agreement(agreement),
-        }  # fmt: skip
-    return {name: drawing for name, drawing in made.items() if drawing}
-
-
-def _charge_figure(
-    particles: Sequence[Row], group_of: Mapping[tuple[str, str], str], charge: Sequence[GroupResult]
-) -> figurestyle.Drawing | None:
-    power = common_power([p["charge_e"] for p in particles])
-    unit = f"({power_of_ten(power)} e)" if power else "e"
-    return campaignfigures.by_group("charge", unit, 10.0**-power, charge, particles, group_of, "charge_e", "u_charge_e")
-
-
 def _set(drawing: figurestyle.Drawing, name: str) -> Row:
-    return {"svg": drawing.svg, "alt": drawing.alt, "width": figures.WIDTH,
-            "caption": f"The numbers drawn are in figures/{name}.csv."}  # fmt: skip
-
-
-def _caption(results: Sequence[GroupResult]) -> str:
-    return (
-        f"{counted(sum(r.particles for r in results), 'particle')} in {counted(len(results), 'group')}. "
-        "Marks: particles with their standard uncertainty; upright strokes: session means; diamond and heavy bar: "
-        "mean of session means with its interval, where at least two sessions give one; an arrow where "
-        "it goes on beyond the axis."
-    )
+    file = _ELSEWHERE.get(name, f"figures/{name}.csv")
+    return comparisonreport.set_drawing(drawing, f"The numbers drawn are in {file}.")
 
 
 def _facts(facts: Mapping[str, Row], particles: Sequence[Row], dates: Sequence[str]) -> list[list[str]]:
@@ -214,9 +145,7 @@ def _facts(facts: Mapping[str, Row], particles: Sequence[Row], dates: Sequence[s
     return pairs
 
 
-def _trust(
-    particles: Sequence[Row], agreement: Sequence[Row], inputs: Sequence[Row], ratio: Sequence[GroupResult]
-) -> list[str]:
+def _trust(particles: Sequence[Row], agreement: Sequence[Row], inputs: Sequence[Row]) -> list[str]:
     words = []
     errors = [abs(a["normalized_error"]) for a in agreement if math.isfinite(a["normalized_error"])]
     if errors:
@@ -233,9 +162,6 @@ def _trust(
             f"{counted(len(poor), 'particle scatters', 'particles scatter')} more than stated (chi-square, p < 0.01): "
             "take the stated u as too small."
         )
-    lone = [foreign(r.group) for r in ratio if r.sessions < 2]
-    if lone:
-        words.append(f"Fewer than two sessions: {joined(lone)}. Described, not compared; no interval is given.")
     strained = sorted(
         {i["input"] for i in inputs if i["u"] > 0 and abs(i["adjusted_estimate"] - i["estimate"]) > _MOVED * i["u"]}
     )

@@ -7,46 +7,18 @@ import math
 from collections.abc import Mapping, Sequence
 from typing import Any
 
-from reduction.groups import GroupResult
 from reduction.sheets import Sheet, columns_of, quantity_column, sheet
 from reduction.typeset import (
     MINUS,
     NONE,
-    bracketed,
-    common_power,
     foreign,
-    interval,
     moved,
     pair,
-    power_of_ten,
-    significant,
 )
 from reduction.wording import counted, flag_words, input_words, status_words, unit_words
 
 Row = dict[str, Any]
 NOT_TAKEN = ("left_out", "failed", "excluded")  # statuses of sessions without results
-
-
-def answer(ratio: Sequence[GroupResult], charge: Sequence[GroupResult], coverage: float) -> Sheet:
-    """Result by group: mean of session means with its interval, or a description where none can be given."""
-    head, cells = ["Group", "Sessions", "Particles"], [[foreign(r.group) for r in ratio]]
-    cells += [[str(r.sessions) for r in ratio], [str(r.particles) for r in ratio]]
-    for name, unit, results in (("q/m", "C kg⁻¹", ratio), ("Charge", "e", charge)):
-        power = common_power([v for r in results for v in (r.mean, r.median)])
-        shared = f"{power_of_ten(power)} {unit}" if power else unit
-        head += [f"{name}\n{shared}", f"{100 * coverage:g} % interval\n{shared}"]
-        cells.append([bracketed(r.mean, r.u, power) if r.u > 0 else NONE for r in results])
-        cells.append([_ends(r, power) for r in results])
-    return sheet(head, cells, "lrrrlrl", [1, 0, 0, 0, 0, 0, 0])
-
-
-def _ends(result: GroupResult, power: int) -> str:
-    if math.isfinite(result.low):
-        return interval(result.low, result.high, result.u, power)
-    if not result.particles:
-        return "no number"
-    low, high = (significant(v / 10.0**power) for v in (result.least, result.most))
-    return f"one session only:\nfrom {low} to {high}" if low != high else f"one particle:\n{low}"
 
 
 def left_out_table(run: Row, facts: Mapping[str, Row], particles: Sequence[Row]) -> Sheet | None:

@@ -64,7 +64,37 @@ def _parser() -> argparse.ArgumentParser:
     one.add_argument("results", type=Path, help="a results folder")
     one.add_argument("session", help="id of the session")
     one.add_argument("particle", help="id of the particle")
+
+    one = command("plan", _plan, "tell how many sessions a difference between two groups takes")
+    one.add_argument("results", type=Path, nargs="?", help="a results folder to take spreads from")
+    one.add_argument("--difference", type=float, required=True, metavar="D", help="difference that shall be seen")
+    one.add_argument("--group", help="group of the results whose spreads to take")
+    one.add_argument("--between-sessions", type=float, metavar="SD", help="spread of session means, stated")
+    one.add_argument("--between-particles", type=float, metavar="SD", help="spread of particles in a session, stated")
+    one.add_argument("--u-particle", type=float, metavar="U", help="u of one particle, its own, stated")
+    one.add_argument("--u-session", type=float, metavar="U", help="u that a session's particles share, stated")
+    one.add_argument("--u-shared", type=float, metavar="U", help="u that one group shares and the other does not")
+    one.add_argument("--power", type=float, default=0.8, help="wanted chance to see the difference (0.8)")
+    one.add_argument("--level", type=float, default=0.05, help="level of the test (0.05)")
+    one.add_argument("--particles", type=int, help="particles in each session (those of the results, or 20)")
+    one.add_argument("--comparisons", type=int, help="pairs of groups tested together (those of the results, or 1)")
+    one.add_argument("--trials", type=int, default=2000, help="simulated campaigns for each number tried (2000)")
+    one.add_argument("--seed", type=int, default=1, help="same seed, same plan (1)")
+
+    one = command("verify", _verify, "hold one particle's intervals against refits of simulated readings")
+    one.add_argument("campaign", type=Path, help="folder that holds campaign.yaml and sessions/")
+    one.add_argument("--refit", type=_pair, required=True, metavar="SESSION/PARTICLE", help="which particle")
+    one.add_argument("--trials", type=int, default=400, help="sets of simulated readings, 200 or more (400)")
+    one.add_argument("--seed", type=int, default=1, help="same seed, same draws (1)")
     return parser
+
+
+def _pair(text: str) -> tuple[str, str]:
+    session, mark, particle = text.partition("/")
+    if not (session and mark and particle):
+        message = f"{text} is no SESSION/PARTICLE, as in s001/p01"
+        raise argparse.ArgumentTypeError(message)
+    return session, particle
 
 
 def _cores(text: str) -> int:
@@ -147,13 +177,46 @@ def _explain(asked: argparse.Namespace) -> int:
     return 0
 
 
+def _plan(asked: argparse.Namespace) -> int:
+    from reduction.sessionsneeded import SPREADS, basis_of, comparison_of, plan_text
+
+    basis = basis_of(comparison_of(asked.results), asked.group) if asked.results is not None else None
+    if basis is None and asked.group is not None:
+        message = "--group names a group of a results folder; expected RESULTS too"
+        raise ReductionError(message)
+    stated = {name: value for name in SPREADS if (value := getattr(asked, name)) is not None}
+    text = plan_text(
+        basis,
+        stated,
+        difference=asked.difference,
+        power=asked.power,
+        level=asked.level,
+        particles=asked.particles,
+        comparisons=asked.comparisons,
+        trials=asked.trials,
+        seed=asked.seed,
+    )
+    _say(f"{text}\n{CAUTION}")
+    return 0
+
+
+def _verify(asked: argparse.Namespace) -> int:
+    from reduction.validation import refit, report_text
+
+    session, particle = asked.refit
+    found = refit(asked.campaign, session, particle, asked.trials, asked.seed)
+    _say(report_text(found))
+    return 3 if any(one.comparison.verdict == "fails" for one in found) else 0
+
+
 def main(argv: Sequence[str] | None = None) -> int:
     """Run one command.
 
     Returns
     -------
     int
-        0 where it did what was asked, 1 where it could not, 2 where it was not asked rightly, 130 where interrupted.
+        0 where it did what was asked, 1 where it could not, 2 where it was not asked rightly, 3 where what was verified
+        does not hold, 130 where interrupted.
     """
     parser = _parser()
     asked = parser.parse_args(argv)

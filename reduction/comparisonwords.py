@@ -27,6 +27,12 @@ SHRINK = {
     "shared": "a better value of {name}: what all sessions share weighs most, and more of them would not shrink it",
 }
 
+_BASIS = {
+    NOT_DETERMINED: "the spread of charge between particles is not determined; only the lot fixes the size of too many "
+    "of them, and sizes drawn towards the lot's mean say nothing of their spread.",
+    LOWER_BOUND: "the spread of charge given is a lower bound; too much of u was taken out of it.",
+}
+
 
 def summary(found: Comparison) -> dict[str, Any]:
     """Record of a comparison as a JSON object: statements in plain words, and what they rest on.
@@ -68,11 +74,14 @@ def _standing(found: Comparison) -> Iterator[str]:
         "session share its charging, air and hands, so no p rests on their number."
     )
     if alone:
-        least = min((one.p_smallest for one in found.pairs if not one.tested), default=1.0)
-        yield (
-            f"{joined(alone)}: {'one session each' if len(alone) > 1 else 'one session'}, described and not tested. "
-            f"Exchanging sessions could not reach a p below {least:.2g}; a second session makes a test possible."
-        )
+        text = f"{joined(alone)}: {'one session each' if len(alone) > 1 else 'one session'}, described and not tested."
+        least = [one.p_smallest for one in found.pairs if not one.tested]
+        if least:
+            text += (
+                f" Exchanging sessions could not reach a p below {min(least):.2g}; a second session makes a test "
+                "possible."
+            )
+        yield text
     if len(found.ranks):
         best = max(range(len(tested)), key=lambda place: (found.ranks[place, 0], tested[place].group))
         yield (
@@ -213,19 +222,17 @@ def charge_statements(found: list[Distribution], facts: Facts, by: str) -> list[
         if (group, species) not in shown:
             lost = counted(sum(reasons.values()), "particle")
             said.append(f"{group}, {species}: {lost} lost, and no other gave a charge: there is no histogram.")
-    for one in found:
-        name = f"{one.group}, {one.species}"
-        if one.intrinsic.basis == NOT_DETERMINED:
-            said.append(
-                f"{name}: the spread of charge between particles is not determined; only the lot fixes the size of too "
-                "many of them, and sizes drawn towards the lot's mean say nothing of their spread."
-            )
-        elif one.intrinsic.basis == LOWER_BOUND:
-            said.append(f"{name}: the spread of charge given is a lower bound; too much of u was taken out of it.")
+    named = {f"{one.group}, {one.species}": one for one in found}
+    for basis, told in _BASIS.items():
+        names = [name for name, one in named.items() if one.intrinsic.basis == basis]
+        if names:
+            said.append(f"{'; '.join(names)}: {told}")
+    for name, one in named.items():
         if one.lost:
             told = joined([f"{count} ({reason})" for reason, count in one.lost.items()])
             said.append(f"{name}: lost and not in the histogram: {told}. What charge they had is not known.")
-        missing = [word for word in ("positive", "negative") if word not in one.window]
-        if one.window and missing:
-            said.append(f"{name}: no session logged a voltage that would have held a {missing[0]} particle.")
+    for word in ("positive", "negative"):
+        names = [name for name, one in named.items() if one.window and word not in one.window]
+        if names:
+            said.append(f"{'; '.join(names)}: no session logged a voltage that would have held a {word} particle.")
     return said

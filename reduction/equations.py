@@ -91,16 +91,10 @@ def air_lines(found: Findings) -> list[str]:
     return lines + filled("g'", "g (1 - rho_air/rho)", numbers, f"{here.weight:.7g} m/s2")
 
 
-def true_voltage(found: Findings, reading: float) -> tuple[float, float]:
-    """Polarity of the trap, and the true dc voltage [V] that goes with a reading.
-
-    The results keep the polarity only in what it did: it is the sign that makes the voltage hold this particle up.
-    """
-    held = found.gain("dc_voltage") * reading + found.value("offset_dc_voltage_V")
-    s = float(found.row["charge_to_mass_C_per_kg"])
-    needed = around(found).weight / s - found.value("stray_field_V_per_m")
-    polarity = math.copysign(1.0, needed * held)
-    return polarity, polarity * held
+def true_voltage(found: Findings, reading: float) -> tuple[int, float]:
+    """Polarity of the trap, and the true dc voltage [V] that goes with a reading."""
+    polarity = int(found.facts["dc_polarity"])
+    return polarity, polarity * (found.gain("dc_voltage") * reading + found.value("offset_dc_voltage_V"))
 
 
 def balance_lines(found: Findings) -> list[str]:
@@ -113,7 +107,7 @@ def balance_lines(found: Findings) -> list[str]:
     gain, offset = found.gain("dc_voltage"), found.value("offset_dc_voltage_V")
     field, stray = found.value("dc_field_per_volt_per_m"), found.value("stray_field_V_per_m")
     weight = around(found).weight
-    numbers = f"{polarity:+.0f} ({gain:.6g} x {reading:.6g} {signed(offset)})"
+    numbers = f"{polarity:+d} ({gain:.6g} x {reading:.6g} {signed(offset)})"
     mean = f"{true:.6g} V, mean of {len(table)} readings"
     lines = filled("U", "polarity (gain reading + offset)", numbers, mean, "    ")
     numbers = f"{weight:.7g}/({field:.6g} x {true:.6g} {signed(stray)})"
@@ -176,8 +170,7 @@ def height_lines(found: Findings) -> list[str]:
     if not (_known(found) and len(table)):
         return []
     streak = found.facts["height_reading"] == "streak_middle"
-    polarity, _ = true_voltage(found, float(table["dc_voltage_V"].mean()))
-    scale = polarity * found.gain("dc_voltage") / found.gain("height") * 1e3
+    scale = int(found.facts["dc_polarity"]) * found.gain("dc_voltage") / found.gain("height") * 1e3
     force = float(found.row["charge_to_mass_C_per_kg"]) * found.value("dc_field_per_volt_per_m")
     lines = ["    height = origin + [s (D U + E) - g']/(Omega^2 K); slopes at the adjusted s and gamma:"]
     for drive, rows in drives(found, table):
@@ -270,8 +263,26 @@ def sphere_lines(found: Findings) -> list[str]:
     q = float(row["charge_C"])
     lines += filled("q", "s m", f"{s:.6g} x {mass:.6g}", with_u(q, row["u_charge_C"], "C"))
     lines += filled("N", "q/e", f"{q:.6g}/{charge.ELEMENTARY_CHARGE:.10g}", _interval(row, "charge", "e"))
+    lines += _drawn(found)
     area = row["surface_charge_density_C_per_m2"], row["u_surface_charge_density_C_per_m2"]
     return lines + filled("sigma", "q/(pi d^2)", f"{q:.6g}/(pi x ({d:.6g})^2)", with_u(*area, "C/m2"))
+
+
+def _drawn(found: Findings) -> list[str]:
+    if not math.isfinite(found.row["charge_low_e"]):
+        return []
+    trials = f"{found.trials} joint draws" if found.trials else "joint draws"
+    return wrapped(
+        f"intervals: {coverage(found)} coverage, of m and N by Monte Carlo (JCGM 101): {trials} of adjusted values and "
+        "inputs in their stated shapes, taken exactly through drag, diameter, mass and charge; their ends need not lie "
+        "evenly about the value.",
+        "  ",
+    )
+
+
+def coverage(found: Findings) -> str:
+    """Coverage probability of the intervals, as `95 %`."""
+    return f"{100.0 * float(found.facts['coverage_probability']):g} %"
 
 
 def _interval(row: Mapping[str, Any], name: str, unit: str) -> str:

@@ -5,13 +5,19 @@ from __future__ import annotations
 import math
 from pathlib import Path
 
-from reduction.equations import EQUATIONS, air_lines, sphere_lines, with_u, wrapped
-from reduction.findings import Findings, read_findings
+from reduction.equations import EQUATIONS, air_lines, coverage, sphere_lines, with_u, wrapped
+from reduction.findings import USED, Findings, read_findings
 from reduction.flags import FLAGS
+from reduction.limits import sentence
 from reduction.wording import CAUTIONS, RESULTS
 
 LINES = 6  # of each budget, the largest shares
 UNITS = {"charge_to_mass": "C/kg", "diameter": "m", "mass": "kg", "charge": "C", "surface_charge_density": "C/m2"}
+TOGETHER = {
+    "session": "all particles of the session together",
+    "campaign": "all particles of the campaign that share an input together",
+    "particle": "each particle by itself",
+}
 QUANTITIES = (
     ("charge-to-mass ratio", "charge_to_mass_C_per_kg", "C/kg"),
     ("drag rate", "drag_rate_per_s", "1/s"),
@@ -75,13 +81,20 @@ def _readings(found: Findings) -> list[str]:
             continue
         status = table["status"]
         lines += wrapped(
-            f"{log}.csv: {len(table)} readings, {int((status != 'excluded').sum())} used, "
-            f"{int((status == 'flagged').sum())} of these flagged, {int((status == 'excluded').sum())} excluded",
+            f"{log}.csv: {len(table)} readings, {int(status.isin(USED).sum())} used, "
+            f"{int((status == 'flagged').sum())} of these flagged, {int((status == 'excluded').sum())} excluded"
+            + (f", {out} left out by the reduction" if (out := int((status == "left_out").sum())) else ""),
             "  ",
         )
-        for _, one in table[status != "used"].iterrows():
+        for _, one in table[~status.isin(("used", "left_out"))].iterrows():
             why = str(one["exclude"]) if one["status"] == "excluded" else str(one["flags"]).replace(";", ", ")
             lines += wrapped(f"line {int(one['line'])} {one['status']}: {why.replace('_', ' ')}", "    ")
+        gone = table[status == "left_out"]
+        if len(gone):
+            row = found.methods[found.methods["method"] == log]
+            why = str(row["reason"].iloc[0] or row["status"].iloc[0]) if len(row) else "not used"
+            span = f"lines {int(gone['line'].min())} to {int(gone['line'].max())}"
+            lines += wrapped(f"{span} left out: {why.replace('_', ' ')}", "    ")
     return lines or ["  None of this particle's readings is in the results."]
 
 
@@ -93,6 +106,8 @@ def _inputs(found: Findings) -> list[str]:
             text += " exact"
         elif math.isfinite(one["adjusted_estimate"]):
             text += f" adjusted {with_u(one['adjusted_estimate'], one['adjusted_u'])}"
+            if math.isfinite(one.get("pull", math.nan)) and abs(one["pull"]) > 2.0:
+                text += f", pull {one['pull']:+.1f}"
         lines.append(text)
     return lines
 
@@ -107,6 +122,10 @@ def _methods(found: Findings) -> list[str]:
         for name, key, unit in QUANTITIES:
             if math.isfinite(one[key]):
                 lines.append(f"    {name} {with_u(one[key], one['u_' + key], unit)}")
+        if math.isfinite(one.get("normalized_residual", math.nan)):
+            lines += wrapped(
+                f"less the adjusted value, over the u of that difference: {one['normalized_residual']:+.2f}", "    "
+            )
         lines += _chi_square(one["chi_square"], one["degrees_of_freedom"], "    chi-square")
         lines += EQUATIONS[method](found) if method in EQUATIONS else []
     return lines or ["  No method had anything to fit."]
@@ -138,17 +157,31 @@ def _adjusted(found: Findings) -> list[str]:
     if row["methods"]:
         lines += wrapped(
             f"Generalised least squares of {str(row['methods']).replace(';', ', ')}, {int(row['readings'])} readings, "
-            f"with the covariance that shared inputs cause (adjust: {found.facts['adjust']}).",
+            f"with the covariance that shared inputs cause, {TOGETHER[str(found.facts['adjust'])]} "
+            f"(adjust: {found.facts['adjust']}).",
             "  ",
         )
     lines.append(f"  s = {with_u(row['charge_to_mass_C_per_kg'], row['u_charge_to_mass_C_per_kg'], 'C/kg')}")
     low, high = row["charge_to_mass_low_C_per_kg"], row["charge_to_mass_high_C_per_kg"]
     if math.isfinite(low) and math.isfinite(high):
-        lines.append(f"    interval {low:.6g} to {high:.6g} C/kg")
+        dof = float(row["effective_degrees_of_freedom"])
+        freedom = "unlimited" if math.isinf(dof) or dof > 1e4 else f"{dof:.3g}"
+        lines += wrapped(
+            f"{coverage(found)} coverage interval {low:.6g} to {high:.6g} C/kg: s exp(+-t u/|s|), t of Student with "
+            f"{freedom} effective degrees of freedom",
+            "    ",
+        )
     lines.append(f"  gamma = {with_u(row['drag_rate_per_s'], row['u_drag_rate_per_s'], '1/s')}")
     if math.isfinite(row["charge_drift_per_s"]):
-        lines.append(f"  charge drift {with_u(row['charge_drift_per_s'], row['u_charge_drift_per_s'], '1/s')}")
-    return lines + _chi_square(row["chi_square"], row["degrees_of_freedom"], "  chi-square of this particle alone")
+        drift = with_u(row["charge_drift_per_s"], row["u_charge_drift_per_s"], "1/s")
+        lines += wrapped(f"charge drift {drift}, relative; s refers to the mean time of the balance readings", "  ")
+    lines += _chi_square(row["chi_square"], row["degrees_of_freedom"], "  chi-square of this particle alone")
+    strain = found.facts.get("strain")
+    if strain and strain["sentences"]:
+        lines += ["", f"  What was adjusted together, {len(strain['sentences'])} findings:"]
+        for sentence in strain["sentences"]:
+            lines += wrapped(f"- {sentence}", "  ")
+    return lines
 
 
 def _budget(found: Findings) -> list[str]:
@@ -158,6 +191,9 @@ def _budget(found: Findings) -> list[str]:
         if not len(table):
             continue
         table = table.assign(size=table["share"].abs()).sort_values(["size", "input"], ascending=[False, True])
+        if result in ("charge_to_mass", "charge"):
+            told = sentence([dict(one) for _, one in table.iterrows()], result)
+            lines += [line.replace("\N{NO-BREAK SPACE}", " ") for line in wrapped(told, "  ")]
         lines.append(f"  {_named(result)}: u that each input causes, and its share of u squared")
         for _, one in table.head(LINES).iterrows():
             lines.append(

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import io
+import math
 import re
 import warnings
 from collections.abc import Iterator, Sequence
@@ -15,6 +16,8 @@ from matplotlib.axes import Axes
 from matplotlib.backends.backend_svg import FigureCanvasSVG
 from matplotlib.figure import Figure
 from numpy.typing import NDArray
+
+from reduction.typeset import power_of_ten
 
 Array = NDArray[np.float64]
 
@@ -167,6 +170,27 @@ def limits(*values: Array, margin: float = 0.08, include: float | None = None) -
     low, high = float(pooled.min()), float(pooled.max())
     air = margin * (high - low) or 0.1 * abs(high) or 1.0
     return low - air, high + air
+
+
+def decades(axes: Axes, linear: float, most: int = 5) -> None:
+    """Ticks of a horizontal axis linear up to `linear` and logarithmic beyond: `most` powers of ten either side."""
+    low, high = axes.get_xlim()
+    first = math.ceil(math.log10(linear) - 1e-9)
+    last = math.floor(math.log10(max(abs(low), abs(high), linear)))
+    step = max(1, math.ceil((last - first + 1) / most))
+    sizes = [10.0**power for power in range(last, first - 1, -step)]
+    ticks = sorted([*(-size for size in sizes), 0.0, *sizes])
+    shown = [tick for tick in ticks if low <= tick <= high]
+    axes.set_xticks(shown, [_power(tick) for tick in shown])
+    axes.minorticks_off()
+
+
+def _power(value: float) -> str:
+    if value == 0.0:
+        return "0"
+    power = round(math.log10(abs(value)))
+    sign = "\N{MINUS SIGN}" if value < 0.0 else ""
+    return sign + ("1" if power == 0 else power_of_ten(power))
 
 
 def spread(positions: Sequence[float], gap: float) -> list[float]:

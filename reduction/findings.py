@@ -15,6 +15,7 @@ from reduction.records import FACTS
 from reduction.tables import read_table
 from reduction.wholefile import read_json
 
+USED = ("used", "flagged")  # states of readings that entered
 RECORDS = Path(".motescale") / "records"
 
 
@@ -31,6 +32,7 @@ class Findings:
     readings: pd.DataFrame
     inputs: pd.DataFrame  # of the session, and of this particle's species only
     facts: Mapping[str, Any]  # session.json
+    trials: int = 0  # Monte Carlo draws, 0 where the folder does not say
 
     def value(self, key: str) -> float:
         """Value used for the input `key`, in the unit of the key: the adjusted one if there is one, nan if none."""
@@ -51,7 +53,7 @@ class Findings:
 
     def used(self, log: str) -> pd.DataFrame:
         """Readings of one log that entered."""
-        return self.readings[(self.readings["log"] == log) & (self.readings["status"] != "excluded")]
+        return self.readings[(self.readings["log"] == log) & self.readings["status"].isin(USED)]
 
 
 def read_findings(results: Path, session: str, particle: str) -> Findings:
@@ -107,7 +109,14 @@ def read_findings(results: Path, session: str, particle: str) -> Findings:
         readings=own(f"readings/{session}.csv"),
         inputs=inputs,
         facts=read_json(record / FACTS),
+        trials=_trials(results),
     )
+
+
+def _trials(results: Path) -> int:
+    path = results / "run.json"
+    settings = read_json(path).get("settings", {}) if path.is_file() else {}
+    return int(settings.get("monte_carlo_trials", 0))
 
 
 def _offer(word: str, known: set[str]) -> str:

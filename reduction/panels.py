@@ -22,12 +22,16 @@ from reduction.figurestyle import (
 )
 
 Row = Mapping[str, Any]
+NOT_USED = ("excluded", "left_out")
 _QUANTITY_WORDS = {"charge_to_mass": "q/m", "drag_rate": "drag rate"}
 
 
 def column(rows: Sequence[Row], name: str) -> Array:
     """One numeric column of some rows; missing numbers are NaN."""
     return np.array([np.nan if row[name] in (None, "") else float(row[name]) for row in rows], dtype=float)
+
+
+_PULL_ROWS, _PULL_REACH = 7, 5.0  # rows drawn at most; the axis either side [u of the difference]
 
 
 def residuals(rows: Sequence[Row]) -> Array:
@@ -49,7 +53,7 @@ def heading(axes: Axes, text: str) -> None:
 def _mark(axes: Axes, rows: Sequence[Row], x: Array, y: Array, u: Array, colour: str, marker: str) -> None:
     """Readings by status: used filled, flagged ringed as well, excluded hollow."""
     status = np.array([str(row["status"]) for row in rows])
-    used = status != "excluded"
+    used = ~np.isin(status, NOT_USED)
     bars(axes, x[used], y[used], u[used], colour)
     points(axes, x[used], y[used], colour, marker)
     if not used.all():
@@ -69,7 +73,7 @@ def _residual_panel(
     for style in dict.fromkeys(styles):
         chosen = np.array([other == style for other in styles])
         _mark(axes, [r for r, c in zip(rows, chosen, strict=True) if c], x[chosen], residual[chosen], u[chosen], *style)
-    used = np.array([row["status"] != "excluded" for row in rows]) & np.isfinite(residual)
+    used = np.array([row["status"] not in NOT_USED for row in rows]) & np.isfinite(residual)
     reach = float(np.max(np.abs(residual[used]) + np.nan_to_num(u[used]), initial=0.0)) or 1.0
     axes.set_ylim(-1.15 * reach, 1.15 * reach)
     heading(axes, f"residual / {unit}")
@@ -224,36 +228,65 @@ def pair_name(row: Row) -> str:
     return f"{row['method_a']} \N{MINUS SIGN} {row['method_b']}, {quantity}"
 
 
-def agreement_panel(axes: Axes, rows: Sequence[Row], twin: list[tuple[object, ...]]) -> str:
-    """Normalised error of every pair of methods; returns what it shows, in words."""
-    heading(axes, "normalised error of methods")
-    known = [row for row in rows if np.isfinite(float(row["normalized_error"]))]
-    if not known:
-        _say(axes, "no two methods give the same quantity")
+def _pull_name(row: Row) -> str:
+    short = {"charge_to_mass": "", "drag_rate": ", drag"}
+    return f"{row['method_a']} \N{MINUS SIGN} {row['method_b']}{short.get(row['quantity'], '')}"
+
+
+def pulls_panel(
+    axes: Axes, methods: Sequence[Row], agreement: Sequence[Row], twin: list[tuple[object, ...]]
+) -> str:  # fmt: skip
+    """Each method against the adjusted value, and pairs of methods, over u of the difference; returns it in words.
+
+    A pair's normalised error is its difference over twice u: the grey band, 2 either side, is where it stays within 1.
+    """
+    own = [(str(r["method"]), float(r["normalized_residual"])) for r in methods if r["method"] != "adjusted"]
+    own = [(name, value) for name, value in own if np.isfinite(value)]
+    known = [row for row in agreement if np.isfinite(float(row["normalized_error"]))]
+    for name, value in own:
+        twin.append(("pulls", name, "normalized_residual", value, "1", None, 1.0, "", "", None))
+    for row in known:
+        twin.append(
+            ("pulls", pair_name(row), "normalized_error", row["normalized_error"], "1", None, 0.5, "", "", None)
+        )
+    if not own and not known:
+        _say(axes, "no two methods\ngive the same\nquantity")
         return "No two methods to compare."
     axes.set_axis_on()
-    value = column(known, "normalized_error")
-    reach = float(min(max(1.6, 1.25 * np.max(np.abs(value)) + 0.5), 4.0))
-    axes.set_xlim(-reach, reach)
-    axes.set_ylim(max(len(known), 3) - 0.4, -0.75)
-    axes.axvspan(-1, 1, facecolor=BAND, edgecolor="none", zorder=0)
+    ranked = sorted(known, key=lambda row: -abs(float(row["normalized_error"])))[: max(1, _PULL_ROWS - len(own))]
+    shown = [row for row in known if row in ranked]
+    rows = [(name, value, True) for name, value in own]
+    rows += [(_pull_name(row), 2.0 * float(row["normalized_error"]), False) for row in shown]
+    axes.set_xlim(-_PULL_REACH, _PULL_REACH)
+    axes.set_ylim(max(len(rows), 5) - 0.5, -0.6)
+    axes.set_xticks([-4, -2, 0, 2, 4])
+    axes.axvspan(-2, 2, facecolor=BAND, edgecolor="none", zorder=0)
     axes.axvline(0, color=HAIR, linewidth=0.6, zorder=0.5)
     axes.set_yticks([])
     axes.spines["left"].set_visible(False)
-    for k, (row, error) in enumerate(zip(known, value, strict=True)):
-        name = pair_name(row)
-        colour, marker, _ = series(0 if abs(error) <= 1 else 1)
-        shown = float(np.clip(error, -reach, reach))
-        if shown == error:
-            bars(axes, np.array([error]), np.array([float(k)]), np.array([0.5]), colour, across=True)
+    if own and shown:
+        axes.axhline(len(own) - 0.5, color=HAIR, linewidth=0.5, zorder=0.5, xmin=-0.95, clip_on=False)
+    for k, (name, value, alone) in enumerate(rows):
+        colour, marker, _ = series(0 if abs(value) <= 2 else 1)
+        at, y = float(np.clip(value, -_PULL_REACH, _PULL_REACH)), np.array([float(k)])
+        if at == value:
+            bars(axes, np.array([value]), y, np.array([1.0]), colour, across=True)
         else:
-            marker = ">" if error > 0 else "<"
-        points(axes, np.array([shown]), np.array([float(k)]), colour, marker, size=4)
-        axes.text(-reach, k - 0.4, f"{name}: {error:+.2f}".replace("-", "\N{MINUS SIGN}"), fontsize=6.6, va="center")
-        twin.append(("agreement", name, "normalized_error", error, "1", k, 0.5, "row", "", None))
-    worst = known[int(np.argmax(np.abs(value)))]
-    return (
-        f"Agreement: {len(known)} pairs of methods, largest normalised error {np.max(np.abs(value)):.2f} "
-        f"({worst['method_a']} against {worst['method_b']}), "
-        f"{'all' if np.max(np.abs(value)) <= 1 else 'not all'} within 1."
-    )
+            marker = ">" if value > 0 else "<"
+        points(axes, np.array([at]), y, colour, marker, hollow=not alone, size=3.6)
+        axes.text(-_PULL_REACH - 0.3, k, name, fontsize=6.8, va="center", ha="right",
+                  color=INK if abs(value) <= 2 else colour)  # fmt: skip
+        if at != value:
+            axes.text(at - np.sign(at) * 0.6, k, f"{value:+.1f}".replace("-", "\N{MINUS SIGN}"), fontsize=6.8,
+                      va="center", ha="right" if at > 0 else "left", color=colour)  # fmt: skip
+    axes.set_title("pulls: difference / u", loc="right", fontsize=8, pad=3, color=INK)
+    spoken = [f"{name} {value:+.2f}" for name, value in own]
+    text = f"Normalised residuals of the methods: {', '.join(spoken)}. " if spoken else ""
+    if known:
+        size = [abs(float(row["normalized_error"])) for row in known]
+        worst = known[int(np.argmax(size))]
+        text += (
+            f"Agreement: {len(known)} pairs of methods, largest normalised error {max(size):.2f} "
+            f"({worst['method_a']} against {worst['method_b']}), {'all' if max(size) <= 1 else 'not all'} within 1."
+        )
+    return text.strip()

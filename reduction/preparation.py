@@ -43,10 +43,12 @@ def prepare(campaign: Campaign, session: Session, logs: Logs) -> Prepared:
     excluded = {
         name: str(details[name]["exclude"]) for name in sorted(mentioned & details.keys()) if details[name]["exclude"]
     }
+    if session.exclude:
+        excluded |= {name: f"session: {session.exclude}" for name in sorted(mentioned - excluded.keys())}
     described = {
         name: (
-            str(details[name]["species"] or session.species),
-            str(details[name]["charged_with"] or session.charged_with),
+            str(details.get(name, {}).get("species") or session.species),
+            str(details.get(name, {}).get("charged_with") or session.charged_with),
         )
         for name in excluded
     }

@@ -108,9 +108,10 @@ def _reading_row(
 ) -> dict[str, Any]:
     """One reading: used, flagged and used, excluded by the user, or left out by the reduction, with the status why."""
     words = outcome.reading_words.get((log, index), [])
-    excluded = str(row["exclude"]) or (
-        outcome.prepared.excluded.get(row["particle"], "") and f"particle: {outcome.prepared.excluded[row['particle']]}"
-    )
+    excluded = str(row["exclude"])
+    if not excluded and row["particle"] in outcome.prepared.excluded:
+        reason = outcome.prepared.excluded[row["particle"]]
+        excluded = reason if outcome.session.exclude else f"particle: {reason}"
     status = "flagged" if words else "used"
     if excluded:
         status = "excluded"

@@ -112,8 +112,8 @@ def campaign_pdf(results: Path, records: Mapping[str, Path], out: Path, *, diges
     doc, drawings = campaignreport.content(Path(results), records, digest=digest, title=title)
     for name in campaignreport.FIGURES:
         (Path(results) / _FIGURES / f"{name}.csv").unlink(missing_ok=True)  # of an earlier run that drew more
-    for name, drawing in sorted(drawings.items()):
-        _write_twin(Path(results) / _FIGURES, name, drawing.columns, drawing.rows)
+        if drawing := drawings.get(name):
+            _write_twin(Path(results) / _FIGURES, name, drawing.columns, drawing.rows)
     _set("campaign.typ", doc, out)
 
 

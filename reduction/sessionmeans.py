@@ -147,7 +147,7 @@ def gather(
     for row in records:
         fact = facts.get(row["session"], {})
         group = group_word(row, fact, by)
-        reason = _reason(row, fact, what.column) or ("" if group else "no_group")
+        reason = why_not(row, fact, what.column) or ("" if group else "no_group")
         groups.append(group)
         taken.append(not reason)
         if reason:
@@ -164,8 +164,8 @@ def gather(
     )  # fmt: skip
 
 
-def _reason(row: Mapping[str, Any], fact: Mapping[str, Any], column: str) -> str:
-    """Why a particle stays out; "" where it does not."""
+def why_not(row: Mapping[str, Any], fact: Mapping[str, Any], column: str) -> str:
+    """Why a particle stays out of a comparison of one column; "" where it does not."""
     if row["status"] == "excluded" or fact.get("status", "ok") != "ok":
         return "excluded"
     if row["status"] != "ok" or not math.isfinite(row[column]):

@@ -9,36 +9,28 @@ from typing import Any
 
 import pandas as pd
 
-from reduction import figures, figurestyle, records, tables
+from reduction import figures, figurestyle, glance, records, tables
+from reduction.quantity import read_quantity, shorthand
+from reduction.sessionbudget import example, limits_table, share_tables
 from reduction.sessiontables import (
-    budgets,
     by_particle,
-    exact_table,
+    drift_table,
+    exact_words,
     input_table,
+    left_out_rows,
     method_table,
     particle_table,
     ratio,
     ratio_power,
     remark_table,
+    signless,
     size_table,
-    ways_table,
     where_table,
 )
 from reduction.sheets import rows_of
-from reduction.typeset import (
-    NONE,
-    bracketed_alone,
-    foreign,
-)
+from reduction.typeset import NONE, bracketed_alone, foreign
 from reduction.wholefile import read_json
-from reduction.wording import (
-    CAUTIONS,
-    counted,
-    flag_words,
-    joined,
-    status_words,
-    unit_words,
-)
+from reduction.wording import CAUTIONS, counted, flag_words, joined, status_words, unit_words
 
 Row = Mapping[str, Any]
 _FACTS = (
@@ -50,6 +42,11 @@ _FACTS = (
     ("operator", "Operator"),
 )
 _READINGS = (("height_reading", "Height means"), ("secular_reading", "Secular frequency means"))
+MASS_WORDS = (
+    "The mass follows from all that is known of the size. Beside it, for comparison, from drag alone: the readings, "
+    "nothing assumed of the size; from diameter alone: the particle\u2019s own, else the mean and spread of the lot. "
+)
+ROOMY = 6  # particles up to which a page holds three of them, else four
 _SETTINGS = (
     ("adjust", "adjusted by"),
     ("drag", "drag"),
@@ -65,36 +62,52 @@ def content(folder: Path, *, digest: str, title: str = "") -> tuple[dict[str, An
     held = {name: tables.read_table(folder / f"{name}.csv") for name in records.PIECES if name != "components"}
     session = str(facts["session"])
     particles = rows_of(held["particles"])
+    rows = {name: rows_of(frame_) for name, frame_ in held.items() if name in ("agreement", "inputs", "budget")}
+    methods, budget = by_particle(held["methods"]), by_particle(held["budget"])
     drawings, sheets = _particle_sheets(session, particles, held, facts)
     coverage = float(facts.get("coverage_probability", 0.95))
+    left_out = left_out_rows(facts, rows_of(held["readings"]), methods)
+    flagged = facts.get("flagged", [])
     doc: dict[str, Any] = {
         **frame(facts, digest, title),
         "facts": fact_pairs(facts),
-        "summary": _summary(particles, facts),
+        "glance": [*glance.answers(particles, rows, facts), ["Left out, flagged", [_kept(left_out, flagged)]]],
         "particles": particle_table(particles, coverage),
         "particles_words": f"Value with its standard uncertainty (k = 1) in the last digits, and the interval of "
-        f"{100 * coverage:g} % coverage. {NONE}: not determined, for the reason in the remarks.",
-        "sizes": size_table(particles),
-        "ways": ways_table(particles, facts),
-        "remarks_table": remark_table(particles),
+        f"{100 * coverage:g} % coverage: of q/m by Student\u2019s t, of the charge by Monte Carlo, for it is skewed. "
+        f"{NONE}: not determined, for the reason in the remarks. ±: the size only; no log tells the sign.",
+        "sizes": size_table(particles, facts),
+        "sizes_words": (MASS_WORDS if any(math.isfinite(p["mass_kg"]) for p in particles) else "")
+        + "χ² and its degrees of freedom are of the particle adjusted alone.",
+        "drift": drift_table(particles),
+        "remarks": remark_table(particles, methods),
+        "fits": glance.fits_together(rows["inputs"], facts),
         "figures": sheets,
         "figures_words": "Filled: used; hollow: left out; ringed: flagged and kept. Bars are standard uncertainties of "
-        "one reading; lines are the adjusted result, residuals the readings less it. Normalised error: the difference "
-        "of two methods over twice its standard uncertainty; within the grey band (1) they agree. ± marks a size "
-        "without a sign, all that a secular frequency gives. The numbers drawn are kept with the record of "
-        "the session, in figures/particles.csv.",
-        "budgets": budgets(particles, held["budget"]),
-        "budgets_words": "Component: sensitivity times u, in the unit of the result; share: its square in percent of "
-        "the variance. Inputs that are correlated after the adjustment need not add up to 100 %.",
+        "one reading, lines the adjusted result, residuals the readings less it. Pulls: each method less the adjusted "
+        "value, and pairs of methods, over the standard uncertainty of that difference; within the grey band, 2 either "
+        "side, they agree. The numbers drawn are kept with the record of the session, in figures/particles.csv.",
+        "methods": method_table(particles, methods),
+        "methods_words": "Shared inputs held as stated; u in brackets has their share in it, its random part has not. "
+        "Residual / u: the method less the adjusted value over the standard uncertainty of that difference. "
+        "± a size without a sign, all that a secular frequency gives.",
+        "limits": limits_table(particles, rows["budget"]),
+        "limits_words": "Share of the variance of each result in percent, inputs gathered by what they have in "
+        "common; the median over the particles. Inputs correlated by the adjustment need not add up to 100 %.",
+        "example": example(particles, budget),
+        "example_words": "Component: sensitivity times u, in the unit of the result. Type B: judged from what is "
+        "known beforehand; A: from repeated readings. Inputs below 0.1 % of the variance are gathered in the last row; "
+        "budget.csv has every input of every result of every particle.",
+        "shares": share_tables(particles, budget),
         "inputs": input_table(held["inputs"]),
-        "inputs_words": "What several readings depend on: as stated, and as the particles of this session adjust it.",
-        "exact": exact_table(facts),
-        "left_out": where_table(facts.get("left_out", []), "Reason"),
-        "flagged": where_table(facts.get("flagged", []), "Why"),
+        "inputs_words": "What several readings depend on, as stated and as the readings adjust it. Pull: how far it "
+        "moved over how far it could have, about 1 in size where all is well; none where the readings say nothing.",
+        "exact": exact_words(facts),
+        "left_out": where_table(left_out, "Reason"),
+        "flagged": where_table(flagged, "Why"),
         "notes": _notes(facts),
         "cautions": [list(pair_) for pair_ in CAUTIONS],
     }
-    doc["remarks"] = doc["remarks_table"]["rows"]
     return doc, drawings
 
 
@@ -139,33 +152,20 @@ def _plain(value: object) -> str:
 
 def _with_unit(key: str, value: object) -> str:
     stem, _, unit = key.partition("_")
+    if unit == "rad":
+        angle = read_quantity(value)
+        degrees, u = math.degrees(angle.estimate), math.degrees(angle.u)
+        value, unit = shorthand(degrees, u) if u else f"{degrees:.6g}", "deg"
     if stem == "relative":
         stem, unit = "humidity", "percent"
     return f"{stem} {value} {unit_words(unit)}".strip()
 
 
-def _summary(particles: Sequence[Row], facts: Row) -> list[str]:
-    by_status = {s: sum(p["status"] == s for p in particles) for s in ("ok", "not_determined", "failed", "excluded")}
-    parts = [f"{n} {status_words(s)}" for s, n in by_status.items() if n]
-    words = [f"{counted(len(particles), 'particle')}: {joined(parts)}." if particles else "No particle was recorded."]
-    known = [p for p in particles if math.isfinite(p["charge_to_mass_C_per_kg"])]
-    if known:
-        signs = {p["charge_to_mass_C_per_kg"] > 0 for p in known if "sign_undetermined" not in p["flags"].split(";")}
-        low = min(known, key=lambda p: p["charge_to_mass_C_per_kg"])
-        high = max(known, key=lambda p: p["charge_to_mass_C_per_kg"])
-        ends = [ratio(p, ratio_power(particles)) for p in (low, high)]
-        span = f"{ends[0]} to {ends[1]}" if low is not high else ends[0]
-        sign = {frozenset({True}): "all positive", frozenset({False}): "all negative",
-                frozenset({True, False}): "of both signs"}.get(frozenset(signs), "sign not determined")  # fmt: skip
-        words.append(f"Charge-to-mass ratio {span} C kg⁻¹, {sign}.")
-    flagged = sorted({word for p in particles for word in flag_words(p["flags"])})
-    left, kept = len(facts.get("left_out", [])), len(facts.get("flagged", []))
-    out = counted(left, "reading or particle was", "readings or particles were") if left else "Nothing was"
-    words.append(
-        f"{out} left out; {counted(kept, 'reading is', 'readings are') if kept else 'no reading is'} flagged and kept; "
-        + (f"{counted(len(flagged), 'kind')} of remark below." if flagged else "no remarks.")
-    )
-    return words
+def _kept(left_out: Sequence[Sequence[Any]], flagged: Sequence[Sequence[Any]]) -> str:
+    out = counted(len(left_out), "entry was", "entries were") if left_out else "Nothing was"
+    kept = counted(len(flagged), "reading is", "readings are") if flagged else "no reading is"
+    listed = " Listed with the reasons near the end." if left_out or flagged else ""
+    return f"{out} left out; {kept} flagged and kept.{listed}"
 
 
 def _particle_sheets(
@@ -174,12 +174,12 @@ def _particle_sheets(
     readings, agreement, methods = (by_particle(held[name]) for name in ("readings", "agreement", "methods"))
     drawings, sheets = [], []
     with figurestyle.styled():
-        drawer = figures.ParticleFigures()
+        drawer = figures.ParticleFigures(low=len(particles) > ROOMY)
         for p in particles:
             name = p["particle"]
             drawing = drawer.draw(
                 session, name, readings.get(name, []), (facts.get("curves") or {}).get(name) or {},
-                agreement.get(name, []),
+                agreement.get(name, []), methods.get(name, []),
             )  # fmt: skip
             if drawing:
                 drawings.append(drawing)
@@ -191,8 +191,7 @@ def _particle_sheets(
                     "alt": drawing.alt if drawing else "",
                     "width": figures.WIDTH,
                     "caption": _caption(readings.get(name, [])),
-                    "nothing": "No readings of this particle entered; there is nothing to draw.",
-                    "methods": method_table(methods.get(name, []), ratio_power(particles)),
+                    "nothing": "No readings of this particle; there is nothing to draw.",
                 }
             )
     return drawings, sheets
@@ -206,21 +205,29 @@ def _particle_words(p: Row, particles: Sequence[Row]) -> str:
     for symbol, key, unit in (("γ", "drag_rate_per_s", "s⁻¹"), ("d", "diameter_um", "µm"), ("m", "mass_kg", "kg"),
                               ("q", "charge_e", "e")):  # fmt: skip
         if math.isfinite(p[key]):
-            parts.append(f"{symbol} = {bracketed_alone(p[key], p[f'u_{key}'])} {unit}")
-    return ", ".join(parts) + "."
+            text = bracketed_alone(p[key], p[f"u_{key}"])
+            parts.append(f"{symbol} = {signless([p], [text])[0] if symbol == 'q' else text} {unit}")
+    return ", ".join(parts)
 
 
 def _caption(readings: Sequence[Row]) -> str:
     count = {log: sum(r["log"] == log for r in readings) for log in ("balance", "height", "secular")}
-    parts = [counted(n, f"{log} reading") for log, n in count.items() if n]
-    out = sum(r["status"] == "excluded" for r in readings)
-    return f"{joined(parts).capitalize()}" + (f", {out} of them left out." if out else ".")
+    parts = [f"{n} {log}" for log, n in count.items() if n]
+    if not parts:
+        return ""
+    out = sum(r["status"] in ("excluded", "left_out") for r in readings)
+    flagged = sum(r["status"] == "flagged" for r in readings)
+    word = "reading" if sum(count.values()) == 1 else "readings"
+    said = f"{joined(parts).capitalize()} {word}" + (f", {out} left out" if out else "")
+    return said + (f", {flagged} flagged" if flagged else "")
 
 
 def _notes(facts: Row) -> list[str]:
     listed = [facts.get("session_notes") or "", *_listed(facts.get("notes"))]
+    by_dialect: dict[str, list[str]] = {}
     for log, dialect in sorted((facts.get("dialects") or {}).items()):
-        listed.append(f"{log}.csv was read as: {dialect}.")
+        by_dialect.setdefault(str(dialect), []).append(f"{log}.csv")
+    listed += [f"Read as {dialect}: {joined(logs)}." for dialect, logs in sorted(by_dialect.items())]
     for log, names in sorted((facts.get("extra_columns") or {}).items()):
         if names:
             listed.append(f"Columns of {log}.csv that were not used: {', '.join(map(str, names))}.")

@@ -16,18 +16,16 @@ from reduction.typeset import (
     common_power,
     foreign,
     interval,
-    moved,
+    minus,
     pair,
-    percent,
     significant,
     times,
     wide,
 )
-from reduction.wording import RESULTS, flag_words, input_words, status_words, unit_words
+from reduction.wording import counted, flag_words, input_words, status_words, unit_words
 
 Row = Mapping[str, Any]
 _SHORT_ID = 12
-_COMPACT_TAIL = 0.005  # inputs below this share everywhere are left to the CSV in the compact table
 
 
 def particle_table(particles: Sequence[Row], coverage: float) -> Sheet:
@@ -37,64 +35,78 @@ def particle_table(particles: Sequence[Row], coverage: float) -> Sheet:
     s, u = columns_of(particles, "charge_to_mass_C_per_kg", "u_charge_to_mass_C_per_kg")
     title, text, power = quantity_column("q/m", "C kg⁻¹", s, u)
     head.append(title)
-    cells.append(text)
+    cells.append(signless(particles, text))
     lows, highs = columns_of(particles, "charge_to_mass_low_C_per_kg", "charge_to_mass_high_C_per_kg")
     head.append(f"{100 * coverage:g} % interval\n" + title.partition("\n")[2])
-    cells.append([interval(a, b, c, power) for a, b, c in zip(lows, highs, u, strict=True)])
-    for name, key, factor, unit in (
-        ("Drag rate", "drag_rate_per_s", 1.0, "s⁻¹"),
-        ("Charge", "charge_e", 1.0, "e"),
-    ):
-        value, u = columns_of(particles, key, f"u_{key}")
-        title, text, _ = quantity_column(name, unit, [factor * v for v in value], [factor * v for v in u])
-        head.append(title)
-        cells.append(text)
-    head.append("From")
-    cells.append([p["methods"].replace(";", ", ") or NONE for p in particles])
-    return sheet(head, cells, "llrlrrl", [_room(particles), 0, 0, 0, 0, 0, 2])
+    cells.append(signless(particles, [interval(*one, power) for one in zip(lows, highs, u, strict=True)]))
+    value, u = columns_of(particles, "drag_rate_per_s", "u_drag_rate_per_s")
+    title, text, _ = quantity_column("Drag rate", "s⁻¹", value, u)
+    head.append(title)
+    cells.append(text)
+    value, u = columns_of(particles, "charge_e", "u_charge_e")
+    if any(map(math.isfinite, value)):
+        title, text, power = quantity_column("Charge", "e", value, u)
+        lows, highs = columns_of(particles, "charge_low_e", "charge_high_e")
+        head += [title, f"{100 * coverage:g} % interval\n" + title.partition("\n")[2]]
+        cells.append(signless(particles, text))
+        cells.append(signless(particles, [interval(*one, power) for one in zip(lows, highs, u, strict=True)]))
+    return sheet(head, cells, "llrlrrl"[: len(head)], [_room(particles)] + [0] * (len(head) - 1))
 
 
-def size_table(particles: Sequence[Row]) -> Sheet | None:
-    """Diameter, mass, charge and how well the particle's own readings fit."""
-    known = [p for p in particles if math.isfinite(p["diameter_um"]) or math.isfinite(p["mass_kg"])]
+def signless(particles: Sequence[Row], cells: Sequence[str]) -> list[str]:
+    """Cells with ± before the sizes of particles whose sign no log tells."""
+    return [
+        f"±{cell}" if cell != NONE and "sign_undetermined" in p["flags"].split(";") else cell
+        for p, cell in zip(particles, cells, strict=True)
+    ]
+
+
+def size_table(particles: Sequence[Row], facts: Row) -> Sheet | None:
+    """Diameter, mass by each way to the size, charge, and how well the particle's own readings fit."""
+    known = [p for p in particles if math.isfinite(p["charge_to_mass_C_per_kg"])]
     if not known:
         return None
-    head, cells = ["Particle"], [[foreign(p["particle"], 14) for p in known]]
-    for name, key, unit in (
-        ("Diameter", "diameter_um", "µm"),
-        ("Mass", "mass_kg", "kg"),
-        ("Charge", "charge_C", "C"),
-        ("Surface charge density", "surface_charge_density_C_per_m2", "C m⁻²"),
-    ):
-        value, u = columns_of(known, key, f"u_{key}")
-        title, text, _ = quantity_column(name, unit, value, u)
-        head.append(title)
-        cells.append(text)
-    head += ["χ²", "Degrees of\nfreedom", "Effective\nd.o.f.", "Mass from"]
-    cells.append([significant(p["chi_square"]) for p in known])
-    cells.append([NONE if math.isnan(p["degrees_of_freedom"]) else f"{p['degrees_of_freedom']:.0f}" for p in known])
-    cells.append([_effective(p["effective_degrees_of_freedom"]) for p in known])
-    cells.append([p["mass_from"] or NONE for p in known])
-    return sheet(head, cells, "lrrrrrrrl", [_room(known), 0, 0, 0, 0, 0, 0, 0, 1])
-
-
-def ways_table(particles: Sequence[Row], facts: Row) -> Sheet | None:
-    """Mass and charge by each way to the size, side by side."""
     masses = facts.get("masses") or {}
-    names = [p["particle"] for p in particles if masses.get(p["particle"])]
-    if not names:
+    by_way = {(p["particle"], str(r["mass_from"])): r for p in known for r in masses.get(p["particle"]) or []}
+    power = common_power([*columns_of(known, "mass_kg")[0], *(float(row["mass_kg"]) for row in by_way.values())])
+    head, cells = ["Particle"], [[foreign(p["particle"], 14) for p in known]]
+
+    def add(name: str, unit: str, columns: Sequence[Sequence[float]], power: int | None = None) -> None:
+        value, u = columns
+        if any(map(math.isfinite, value)):
+            title, text, _ = quantity_column(name, unit, value, u, power)
+            head.append(title)
+            cells.append(signless(known, text) if name.startswith(("Charge", "Surface")) else text)
+
+    add("Diameter", "µm", columns_of(known, "diameter_um", "u_diameter_um"))
+    add("Mass", "kg", columns_of(known, "mass_kg", "u_mass_kg"), power)
+    for way in ("drag", "diameter"):
+        rows = [by_way.get((p["particle"], way), {}) for p in known]
+        both = [[float(row.get(key, math.nan)) for row in rows] for key in ("mass_kg", "u_mass_kg")]
+        add(f"from {way}\nalone", "kg", both, power)
+    add("Charge", "C", columns_of(known, "charge_C", "u_charge_C"))
+    add("Surface charge\ndensity", "C m⁻²", columns_of(
+        known, "surface_charge_density_C_per_m2", "u_surface_charge_density_C_per_m2"))  # fmt: skip
+    head += ["χ² / d.o.f.", "Effective\nd.o.f."]
+    cells.append([_over(p) for p in known])
+    cells.append([_effective(p["effective_degrees_of_freedom"]) for p in known])
+    return sheet(head, cells, "l" + "r" * (len(head) - 1), [_room(known)] + [0] * (len(head) - 1))
+
+
+def drift_table(particles: Sequence[Row]) -> Sheet | None:
+    """Relative drift of the charge of the particles that drift."""
+    rows = [p for p in particles if math.isfinite(p["charge_drift_per_s"])]
+    if not rows:
         return None
-    by_way = {(name, str(row["mass_from"])): row for name in names for row in masses[name]}
-    head, cells = ["Particle"], [[foreign(name, 14) for name in names]]
-    for title, key, unit in (("Mass", "mass_kg", "kg"), ("Charge", "charge_e", "e")):
-        power = common_power([row[key] for row in by_way.values()])
-        for way in ("adjusted", "drag", "diameter"):
-            rows = [by_way.get((name, way), {}) for name in names]
-            value, u = ([float(row.get(k, math.nan)) for row in rows] for k in (key, f"u_{key}"))
-            top, text, _ = quantity_column(f"{title},\n{way}", unit, value, u, power)
-            head.append(top)
-            cells.append(text)
-    return sheet(head, cells, "lrrrrrr", [1, 1, 1, 1, 1, 1, 1])
+    value, u = columns_of(rows, "charge_drift_per_s", "u_charge_drift_per_s")
+    second, per_second, _ = quantity_column("Relative drift of the charge", "s⁻¹", value, u)
+    hour, per_hour, _ = quantity_column("in an hour", "%", [36e4 * v for v in value], [36e4 * v for v in u], 0)
+    return sheet(
+        ["Particle", second, hour],
+        [[foreign(p["particle"], 14) for p in rows], per_second, per_hour],
+        "lrr",
+        [_room(rows), 0, 0],
+    )
 
 
 def _room(particles: Sequence[Row]) -> int:
@@ -108,19 +120,22 @@ def _effective(dof: float) -> str:
     return "∞" if math.isinf(dof) else "> 1000" if dof > 1000 else f"{dof:.0f}"
 
 
-def remark_table(particles: Sequence[Row]) -> Sheet:
-    """What qualifies the particles' results, in words."""
-    rows = [(p, words) for p in particles if (words := flag_words(p["flags"])) or p["status"] not in ("ok", "excluded")]
+def remark_table(particles: Sequence[Row], methods: Mapping[str, Sequence[Row]]) -> Sheet:
+    """What qualifies the particles' results, in words, and whose."""
+    whose: dict[str, list[str]] = {}
+    for p in particles:
+        words = flag_words(p["flags"])
+        if p["status"] not in ("ok", "excluded"):
+            adjusted = next((r for r in methods.get(p["particle"], []) if r["method"] == "adjusted"), None)
+            why = f": {foreign(adjusted['reason'])}" if adjusted and adjusted["reason"] else ""
+            words = [status_words(p["status"]) + why, *words]
+        for one in words:
+            whose.setdefault(one, []).append(p["particle"])
+    ranked = sorted(whose, key=lambda one: (-len(whose[one]), one))
     return sheet(
-        ["Particle", "State", "Remark"],
-        [
-            [foreign(p["particle"], 14) for p, _ in rows],
-            [status_words(p["status"]) for p, _ in rows],
-            ["; ".join(words) or NONE for _, words in rows],
-        ],
-        "lll",
-        [_room([p for p, _ in rows]), 0, 3],
-    )
+        ["Remark", "Particles"], [ranked, [", ".join(foreign(name, 14) for name in whose[one]) for one in ranked]],
+        "ll", [2, 1],
+    )  # fmt: skip
 
 
 def ratio_power(particles: Sequence[Row]) -> int | None:
@@ -132,22 +147,30 @@ def ratio_power(particles: Sequence[Row]) -> int | None:
 def ratio(p: Row, power: int | None) -> str:
     """Charge-to-mass ratio of a particle with the power of ten the session shares."""
     value, u = p["charge_to_mass_C_per_kg"], p["u_charge_to_mass_C_per_kg"]
-    return bracketed_alone(value, u) if power is None else times(bracketed(value, u, power), power)
+    text = bracketed_alone(value, u) if power is None else times(bracketed(value, u, power), power)
+    return signless([p], [text])[0]
 
 
-def method_table(rows: Sequence[Row], power: int | None) -> Sheet | None:
-    """Each method by itself, with the adjusted value last; charge-to-mass in units of ten to `power`."""
+def method_table(particles: Sequence[Row], methods: Mapping[str, Sequence[Row]]) -> Sheet | None:
+    """Each method of every particle by itself, with the adjusted value last."""
+    rows = [row for p in particles for row in methods.get(p["particle"], [])]
     if not rows:
         return None
-    head, cells = ["Method"], [[r["method"] for r in rows]]
+    signs = {p["particle"]: p["flags"] for p in particles}
+    spans = [len(methods[p["particle"]]) for p in particles if methods.get(p["particle"])]
+    head = ["Particle", "Method"]
+    cells = [[foreign(r["particle"], 10) for r in rows], [r["method"] for r in rows]]
     s, u, own = columns_of(
         rows, "charge_to_mass_C_per_kg", "u_charge_to_mass_C_per_kg", "u_random_charge_to_mass_C_per_kg"
     )
-    title, text, power = quantity_column("q/m", "C kg⁻¹", s, u, power)
+    title, text, power = quantity_column("q/m", "C kg⁻¹", s, u, ratio_power(particles))
     text = [
-        f"±{cell}" if r["method"] == "secular" and v > 0 else cell for r, v, cell in zip(rows, s, text, strict=True)
+        f"±{cell}"
+        if cell != NONE and v > 0 and (r["method"] == "secular" or "sign_undetermined" in signs[r["particle"]])
+        else cell
+        for r, v, cell in zip(rows, s, text, strict=True)
     ]
-    head += [title, "random part\nof u alone"]
+    head += [title, "random part\nof u"]
     cells += [text, [NONE if math.isnan(v) else significant(v / 10.0**power, 2) for v in own]]
     gamma, u = columns_of(rows, "drag_rate_per_s", "u_drag_rate_per_s")
     title, text, _ = quantity_column("Drag rate", "s⁻¹", gamma, u)
@@ -155,19 +178,31 @@ def method_table(rows: Sequence[Row], power: int | None) -> Sheet | None:
     cells.append(text)
     origin, u = ([1e3 * v for v in c] for c in columns_of(rows, "height_origin_mm", "u_height_origin_mm"))
     if any(map(math.isfinite, origin)):
-        title, text, _ = quantity_column("Height origin", "µm", origin, u, 0)
+        title, text, _ = quantity_column("Height\norigin", "µm", origin, u, 0)
         head.append(title)
         cells.append(text)
-    head += ["Readings", "χ² / d.o.f.", "State"]
+    head += ["Readings", "χ² / d.o.f.", "Residual\n/ u"]
     cells.append([NONE if math.isnan(r["readings"]) else f"{r['readings']:.0f}" for r in rows])
-    cells.append(
-        [
-            NONE if math.isnan(r["chi_square"]) else f"{significant(r['chi_square'])} / {r['degrees_of_freedom']:.0f}"
-            for r in rows
-        ]
-    )
-    cells.append([_state(r) for r in rows])
-    return sheet(head, cells, "l" + "r" * (len(head) - 2) + "l", [0] * (len(head) - 1) + [1])
+    cells.append([_over(r) for r in rows])
+    cells.append([signed(r["normalized_residual"]) for r in rows])
+    align, widths = "ll" + "r" * (len(head) - 2), [_room(particles)] + [0] * (len(head) - 1)
+    notes = ["" if r["status"] == "ok" else _state(r) for r in rows]
+    if any(notes):
+        head.append("Note")
+        cells.append(notes)
+        align, widths = align + "l", [*widths, 1]
+    return {**sheet(head, cells, align, widths), "spans": spans}
+
+
+def signed(value: float) -> str:
+    """A normalised residual, with its sign."""
+    return NONE if not math.isfinite(value) else minus(f"{value:+.2f}")
+
+
+def _over(row: Row) -> str:
+    if math.isnan(row["chi_square"]):
+        return NONE
+    return f"{row['chi_square']:.1f} / {row['degrees_of_freedom']:.0f}"
 
 
 def _state(row: Row) -> str:
@@ -175,122 +210,66 @@ def _state(row: Row) -> str:
     return f"{words}: {foreign(row['reason'])}" if row["reason"] and row["reason"] != words else words
 
 
-def budgets(particles: Sequence[Row], budget: pd.DataFrame) -> list[dict[str, Any]]:
-    """Uncertainty budget of each particle: charge-to-mass ratio in full, the other results as shares."""
-    rows = by_particle(budget)
-    out = []
-    for p in particles:
-        own = rows.get(p["particle"], [])
-        main = [r for r in own if r["result"] == "charge_to_mass"]
-        if not main:
-            continue
-        value = ratio(p, ratio_power(particles))
-        others = _compact(own)
-        out.append(
-            {
-                "title": f"Particle {foreign(p['particle'])}: charge-to-mass ratio {value} C kg⁻¹",
-                "table": _budget_table(main),
-                "others": others,
-                "others_words": "The other results of this particle: share of each input in the variance, in percent.",
-            }
-        )
-    return out
-
-
-def _named(name: str) -> str:
-    what, whose = input_words(name)
-    if name.startswith("particle/"):
-        return foreign(what)
-    whose = "this session" if name.startswith("session/") else whose
-    return foreign(f"{what}, {whose}" if whose else what)
-
-
-def _budget_table(rows: Sequence[Row]) -> Sheet:
-    ranked = sorted(rows, key=lambda r: (-abs(r["component"]) if math.isfinite(r["component"]) else 0.0, r["input"]))
-    both = [pair(r["estimate"], r["u"]) for r in ranked]
-    return sheet(
-        ["Quantity", "Estimate", "u", "Shape", "Type", "Sensitivity", "Component\nC kg⁻¹", "Share\n%"],
-        [
-            [_named(r["input"]) for r in ranked],
-            [estimate for estimate, _ in both],
-            [u for _, u in both],
-            [r["shape"] or NONE for r in ranked],
-            [r["evaluation"] or NONE for r in ranked],
-            [significant(r["sensitivity"]) for r in ranked],
-            [significant(r["component"]) for r in ranked],
-            [percent(r["share"]) for r in ranked],
-        ],
-        "lrrlcrrr",
-        [1, 0, 0, 0, 0, 0, 0, 0],
-    )
-
-
-def _compact(rows: Sequence[Row]) -> Sheet | None:
-    results = [name for name in RESULTS if name != "charge_to_mass" and any(r["result"] == name for r in rows)]
-    if not results:
-        return None
-    share = {(r["result"], r["input"]): r["share"] for r in rows}
-    largest: dict[str, float] = {}
-    for (result, name), value in share.items():
-        if result in results and math.isfinite(value):
-            largest[name] = max(largest.get(name, 0.0), abs(value))
-    names = sorted((n for n in largest if largest[n] >= _COMPACT_TAIL), key=lambda n: (-largest[n], n))
-    cells = [[_named(name) for name in names]]
-    cells += [[percent(share.get((result, name), math.nan)) for name in names] for result in results]
-    return sheet(
-        ["Quantity", *[RESULTS[name][0].capitalize().replace("Surface charge", "Surface\ncharge") for name in results]],
-        cells, "l" + "r" * len(results), [1] + [0] * len(results),
-    )  # fmt: skip
-
-
 def input_table(frame_: pd.DataFrame) -> Sheet | None:
-    """Shared inputs as stated and as adjusted."""
+    """Shared inputs as stated and, where particles are adjusted together, as adjusted, with the pull."""
     rows = [r for r in rows_of(frame_) if r["scope"] != "particle" and r["u"] > 0]
     if not rows:
         return None
     words = [input_words(r["input"]) for r in rows]
     stated = [pair(r["estimate"], r["u"]) for r in rows]
-    adjusted = [pair(r["adjusted_estimate"], r["adjusted_u"]) for r in rows]
-    return sheet(
-        ["Input", "Shared by", "Unit", "Stated", "u", "Adjusted", "u adjusted", "Moved\n/ u", "Shape"],
-        [
-            [foreign(what) for what, _ in words],
-            [
-                "this session" if r["scope"] == "session" else foreign(whose)
-                for r, (_, whose) in zip(rows, words, strict=True)
-            ],
-            [unit_words(r["unit"]) or "1" for r in rows],
-            [estimate for estimate, _ in stated],
-            [u for _, u in stated],
+    whose = [
+        "this session" if r["scope"] == "session" else foreign(one) for r, (_, one) in zip(rows, words, strict=True)
+    ]
+    head = ["Input", "Shared by", "Unit", "Stated", "u", "Shape"]
+    cells = [
+        [foreign(what) for what, _ in words],
+        whose,
+        [unit_words(r["unit"]) or "1" for r in rows],
+        [estimate for estimate, _ in stated],
+        [u for _, u in stated],
+        [r["shape"] or NONE for r in rows],
+    ]
+    if any(math.isfinite(r["adjusted_u"]) for r in rows):
+        adjusted = [pair(r["adjusted_estimate"], r["adjusted_u"]) for r in rows]
+        head[5:5] = ["Adjusted", "u adjusted", "Pull"]
+        cells[5:5] = [
             [estimate for estimate, _ in adjusted],
             [u for _, u in adjusted],
-            [moved(r["estimate"], r["u"], r["adjusted_estimate"]) for r in rows],
-            [r["shape"] or NONE for r in rows],
-        ],
-        "lllrrrrrl",
-        [2, 1, 0, 0, 0, 0, 0, 0, 0],
-    )
+            [signed(r.get("pull", math.nan)) for r in rows],
+        ]
+    return sheet(head, cells, "lll" + "r" * (len(head) - 4) + "l", [2, 1] + [0] * (len(head) - 2))
 
 
-def exact_table(facts: Row) -> Sheet | None:
-    """Inputs stated without an uncertainty."""
+def exact_words(facts: Row) -> str:
+    """Inputs stated without an uncertainty, with their values, as one sentence."""
     rows = facts.get("exact_inputs") or []
-    if not rows:
-        return None
-    return sheet(
-        ["Input", "Value", "Unit"],
-        [
-            [_exact_words(str(name)) for name, _, _ in rows],
-            [foreign(value) for _, value, _ in rows],
-            [unit_words(str(unit)) or "1" for _, _, unit in rows],
-        ],
-        "lrl",
-        [2, 2, 1],
-    )
+    told = [
+        f"{_exact_words(str(name))} {foreign(f'{value} {unit_words(str(unit))}'.strip())}" for name, value, unit in rows
+    ]
+    return "; ".join(told) + "." if told else "None."
 
 
 def _exact_words(name: str) -> str:
-    return _named(name) if name.count("/") >= 2 else foreign(name.replace("/", ", ").replace("_", " "))
+    if name.count("/") < 2:
+        return foreign(name.replace("/", ", ").replace("_", " "))
+    what, whose = input_words(name)
+    whose = "" if name.startswith("session/") else whose
+    return foreign(f"{what}, {whose}" if whose else what)
+
+
+def left_out_rows(facts: Row, readings: Sequence[Row], methods: Mapping[str, Sequence[Row]]) -> list[list[Any]]:
+    """What the user excluded, then what the reduction had to leave out, log by log of a particle, with the reason."""
+    rows: list[list[Any]] = [list(row) for row in facts.get("left_out", [])]
+    lines: dict[tuple[str, str], list[int]] = {}
+    for reading in readings:
+        if reading["status"] == "left_out":
+            lines.setdefault((str(reading["particle"]), str(reading["log"])), []).append(int(reading["line"]))
+    for (particle, log), own in sorted(lines.items()):
+        row = next((r for r in methods.get(particle, []) if r["method"] == log), None)
+        why = _state(row) if row else "not used"
+        span = f"{min(own)} to {max(own)}" if len(own) > 1 else str(own[0])
+        rows.append([log, span, particle, f"{counted(len(own), 'reading')}: {why}"])
+    return rows
 
 
 def where_table(rows: Sequence[Sequence[Any]], last: str) -> Sheet | None:

@@ -189,7 +189,7 @@ def _draw(results: Path, made: Plan, session: str) -> None:
     if facts["status"] == "left_out":
         failed_session_pdf(session, str(facts["reason"]), page, digest=name)
     else:
-        session_pdf(folder, page, digest=name)
+        session_pdf(folder, page, digest=name, title=made.title)
 
 
 def tables(campaign: Path, results: Path) -> None:
@@ -204,12 +204,23 @@ def tables(campaign: Path, results: Path) -> None:
     tell(f"tables: {len(folders)} sessions")
 
 
+def comparison(results: Path) -> None:
+    """Compare the groups of the campaign, with the session as the unit."""
+    from reduction.comparisontables import write_comparison
+
+    made = Plan.load(results)
+    facts = {name: read_json(folder / FACTS) for name, folder in made.records(results)}
+    found = write_comparison(results, facts, read_json(results / "run.json")["settings"])
+    tell(f"comparison: {len(found.means.groups)} groups")
+
+
 def report(results: Path) -> None:
     """Draw the campaign's report."""
     from reduction.report import campaign_pdf
 
     made = Plan.load(results)
-    campaign_pdf(results, dict(made.records(results)), results / "report.pdf", digest=made.campaign)
+    records = dict(made.records(results))
+    campaign_pdf(results, records, results / "report.pdf", digest=made.campaign, title=made.title)
     tell(f"report: {len(made.sessions)} sessions")
 
 
@@ -251,12 +262,12 @@ def _span(names: Sequence[str]) -> str:
     return names[0] if len(names) == 1 else f"{names[0]} to {names[-1]}"
 
 
+STEPS = "plan check reduce adjust session_reports tables comparison report session_files tidy"
+
+
 def _arguments(argv: Sequence[str] | None) -> argparse.Namespace:
     parser = argparse.ArgumentParser(prog="python -m reduction.steps", description=__doc__)
-    parser.add_argument(
-        "step",
-        choices=["plan", "check", "reduce", "adjust", "session_reports", "tables", "report", "session_files", "tidy"],
-    )
+    parser.add_argument("step", choices=STEPS.split())
     parser.add_argument("--campaign", type=Path, help="folder that holds campaign.yaml and sessions/")
     parser.add_argument("--results", type=Path, default=Path(), help="folder of the results (here)")
     parser.add_argument("--batch", help="name of the batch of sessions, its first, for reduce and session_reports")

@@ -42,11 +42,14 @@ COLUMNS: dict[str, tuple[str, ...]] = {
 """The columns of every table of the results, in their order."""
 
 _TEXT = """session particle species charged_with status flags methods mass_from method reason method_a method_b quantity
-    unit input scope owner shape result evaluation group group_a group_b log exclude"""
+    unit input scope owner shape result evaluation group group_a group_b log exclude note date scale kind members
+    verdict covariate intrinsic_basis"""
 TEXT = frozenset(_TEXT.split())
 """Columns that hold text; every other one holds numbers."""
 
-WHOLE = frozenset(["readings", "degrees_of_freedom", "line", "sessions", "particles"])
+_WHOLE = """readings degrees_of_freedom line sessions particles count lost sign_undetermined not_determined excluded
+    rank_low rank_high session_order intrinsic_particles"""
+WHOLE = frozenset(_WHOLE.split())
 """Columns that count something: written without a decimal point where the number is whole."""
 
 _NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?")

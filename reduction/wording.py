@@ -18,6 +18,7 @@ STATUS = {
     "no_oscillation": "no secular oscillation exists",
     "used": "used",
     "flagged": "flagged and kept",
+    "left_out": "left out by the reduction",
 }
 RESULTS = {
     "charge_to_mass": ("charge-to-mass ratio", "C kg⁻¹"),
@@ -33,6 +34,7 @@ OWN = {
     "secular": "own secular readings",
     "diameter": "own or lot diameter",
 }
+_KEYS = {"finite_reynolds": "finite Reynolds number"}
 _LONGEST_FIRST = sorted(UNITS, key=lambda spelling: (-len(spelling), spelling))
 _RAISED = {"2": "²", "3": "³"}
 
@@ -87,7 +89,7 @@ def input_words(name: str) -> tuple[str, str]:
         if key.endswith("_" + spelling) and len(key) > len(spelling) + 1:
             key = key[: -len(spelling) - 1]
             break
-    return key.replace("_", " "), f"{scope} {owner}".strip()
+    return _KEYS.get(key, key.replace("_", " ")), f"{scope} {owner}".strip()
 
 
 def joined(words: list[str]) -> str:

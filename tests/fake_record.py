@@ -79,7 +79,8 @@ def write_record(
         scope, owner, _ = full.split("/")
         tables["inputs"].append(
             {"input": full, "scope": scope, "owner": owner, "estimate": estimate, "u": u, "unit": unit,
-             "shape": "normal", "adjusted_estimate": adjusted, "adjusted_u": adjusted_u}
+             "shape": "normal", "adjusted_estimate": adjusted, "adjusted_u": adjusted_u,
+             "pull": (adjusted - estimate) / math.sqrt(u**2 - adjusted_u**2) if adjusted_u < u else None}
         )  # fmt: skip
     for name in ("particles", "methods", "agreement", "inputs", "components", "budget", "readings"):
         write_table(folder / f"{name}.csv", COLUMNS[name], _rows(name, tables[name]))
@@ -103,6 +104,17 @@ def write_record(
         "flagged": [["height.csv", 9, names[0], "4.6 standard deviations from the fit"]],
         "curves": curves,
         "stray_field": {"estimate": 0.0, "u": 40.0, "adjusted": 12.0 + 10 * math.sin(seed), "adjusted_u": 9.0},
+        "dc_polarity": 1,
+        "strain": {
+            "chi_square": 131.4,
+            "degrees_of_freedom": 118,
+            "p": 0.188,
+            "strains_most": names[0],
+            "others_move_u": 0.21,
+            "sentences": [f"The height log of particle {names[0]} misses the adjusted values by 2.2 u."],
+        }
+        if len(names) > 2
+        else None,
         "adjust": "session",
         "coverage_probability": 0.95,
     }
@@ -185,7 +197,8 @@ def _methods(
         ok = method != "secular" or secular
         row = {**head, "method": method, "status": "ok" if ok else "no_oscillation",
                "reason": "" if ok else "the drag is too high for a secular oscillation", "readings": 6,
-               "chi_square": 4.2, "degrees_of_freedom": 4}  # fmt: skip
+               "chi_square": 4.2, "degrees_of_freedom": 4,
+               "normalized_residual": float(rng.normal()) if ok else None}  # fmt: skip
         if has_s and ok:
             row |= {"charge_to_mass_C_per_kg": s * (1 + float(rng.normal(0, 0.01))),
                     "u_charge_to_mass_C_per_kg": 1.6 * u_s, "u_random_charge_to_mass_C_per_kg": 0.3 * u_s}  # fmt: skip

@@ -29,6 +29,9 @@ class Options:
     drag: str = "unsteady"
     adjust: str = "session"
     when_a_session_fails: str = "stop"
+    coverage_probability: float = 0.95
+    monte_carlo_trials: int = 1000
+    compare: dict = field(default_factory=lambda: {"quantity": "charge_to_mass", "by": "charged_with"})
 
 @dataclass(frozen=True)
 class Campaign:
@@ -101,16 +104,16 @@ def reduce_campaign(campaign, logs):
 import os
 from reduction.wholefile import write_whole
 
-def session_pdf(folder, out, *, digest):
+def session_pdf(folder, out, *, digest, title):
     with open(os.environ["STANDIN_CALLS"], "a") as calls:
         calls.write(f"draw {folder.parent.name}\\n")
-    write_whole(out, (folder / "particles.csv").read_bytes() + digest.encode())
+    write_whole(out, (folder / "particles.csv").read_bytes() + digest.encode() + title.encode())
 
 def failed_session_pdf(session, faults_text, out, *, digest):
     write_whole(out, faults_text.encode() + digest.encode())
 
-def campaign_pdf(results, records, out, *, digest):
-    write_whole(out, (results / "particles.csv").read_bytes() + digest.encode())
+def campaign_pdf(results, records, out, *, digest, title):
+    write_whole(out, (results / "comparison.csv").read_bytes() + digest.encode() + title.encode())
 """,
 }
 

@@ -226,7 +226,7 @@ def test_what_has_no_sign_or_no_value_is_left_out_and_counted() -> None:
 def test_groups_by_a_word_of_the_session() -> None:
     particles = rows({"a": {"s1": [1.0, 2.0], "s2": [3.0, 4.0]}})
     given = facts(particles, trap="ring-a")
-    given["s1"]["attributes"] = {"lot": "B7"}
+    given["s1"] |= {"attributes": {"lot": "B7"}, "lot": "prior"}  # the latter an option of the reduction
     given["s2"]["attributes"] = {"lot": "B8"}
     assert compare(particles, parts(particles, {}), given, by="lot", trials=100).cells.group == ("B7", "B8")
     assert compare(particles, parts(particles, {}), given, by="trap", trials=100).cells.group == ("ring-a", "ring-a")

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+import json
 import math
 import re
 import shutil
@@ -18,6 +19,7 @@ from reduction.logs import read_logs
 from reduction.session import reduce_session
 from reduction.settings import load_campaign
 from reduction.simulation import PLANS, Habits, simulate_campaign
+from reduction.tables import read_table
 
 SESSIONS = {"s001": "room_air_light", "s002": "room_air_dense"}
 
@@ -190,12 +192,73 @@ def test_every_section_is_there_in_order_within_a_hundred_columns(results: Path)
 
 def test_the_largest_share_of_the_budget_comes_first(results: Path) -> None:
     text = explain(results, "s001", "p02").partition("8. What makes")[2]
-    first = text.split("\n  ")[1]
-    assert "dc_field_per_volt_per_m" in text.splitlines()[3]
-    shares = [float(share) for share in re.findall(r"(-?[\d.]+) %$", text.partition("diameter: u")[0], re.M)]
-    assert first.startswith("charge-to-mass ratio")
+    listed = text.partition("charge-to-mass ratio: u that each input causes")[2].partition("diameter: u")[0]
+    assert "dc_field_per_volt_per_m" in listed.splitlines()[1]
+    shares = [float(share) for share in re.findall(r"(-?[\d.]+) %$", listed, re.M)]
     assert shares[:-1] == sorted(shares[:-1], key=abs, reverse=True)
     assert sum(shares) == pytest.approx(100.0, abs=1.0)
+
+
+def test_what_limits_a_result_is_said_with_the_share_of_its_table(results: Path) -> None:
+    """The trap constants' shares, summed from budget.csv here, are what the sentence says of them."""
+    text = " ".join(explain(results, "s001", "p02").split())
+    said = re.search(r"Charge-to-mass ratio: the trap constants make up (\d+) % of the variance", text)
+    assert said
+    with (results / "budget.csv").open(encoding="utf-8", newline="") as stream:
+        own = [r for r in csv.DictReader(stream) if (r["session"], r["particle"], r["result"]) ==
+               ("s001", "p02", "charge_to_mass") and r["input"].startswith("trap/")]  # fmt: skip
+    assert int(said[1]) == round(100 * sum(float(r["share"]) for r in own))
+
+
+def test_intervals_say_their_coverage_and_where_they_come_from(results: Path, tmp_path: Path) -> None:
+    text = " ".join(explain(results, "s001", "p02").split())
+    found = row(results, "s001", "p02")
+    low = float(found["charge_to_mass_low_C_per_kg"])
+    assert number_after(text, "95 % coverage interval") == pytest.approx(low, rel=1e-5)
+    assert "95 % coverage, of m and N by Monte Carlo (JCGM 101): joint draws" in text
+    shutil.copytree(results, tmp_path / "copy")
+    (tmp_path / "copy" / "run.json").write_text('{"settings": {"monte_carlo_trials": 3456}}', encoding="utf-8")
+    assert "3456 joint draws" in explain(tmp_path / "copy", "s001", "p02")
+
+
+def test_strain_of_the_adjustment_is_told_and_how_the_particles_were_adjusted(results: Path) -> None:
+    text = " ".join(explain(results, "s001", "p02").split())
+    facts = json.loads((results / ".motescale/records/s001/0f3a/session.json").read_text(encoding="utf-8"))
+    assert "all particles of the session together (adjust: session)" in text
+    assert len(facts["strain"]["sentences"]) > 1
+    for sentence in facts["strain"]["sentences"]:
+        assert " ".join(sentence.split()) in text
+
+
+def test_polarity_is_that_of_the_trap(results: Path, tmp_path: Path) -> None:
+    """A trap wired the other way round holds the same particle at the opposite reading."""
+    shutil.copytree(results, tmp_path / "copy")
+    path = tmp_path / "copy/.motescale/records/s001/0f3a/session.json"
+    facts = json.loads(path.read_text(encoding="utf-8"))
+    sign = f"{facts['dc_polarity']:+d} ("
+    other = f"{-facts['dc_polarity']:+d} ("
+    path.write_text(json.dumps({**facts, "dc_polarity": -facts["dc_polarity"]}), encoding="utf-8")
+    assert f"= {sign}" in explain(results, "s001", "p02")
+    assert f"= {other}" in explain(tmp_path / "copy", "s001", "p02")
+
+
+def test_readings_the_reduction_left_out_are_told_with_the_reason_of_their_method(
+    results: Path, tmp_path: Path
+) -> None:  # fmt: skip
+    shutil.copytree(results, tmp_path / "copy")
+    readings, methods = (read_table(results / name) for name in ("readings/s002.csv", "methods.csv"))
+    gone = (readings["particle"] == "p02") & (readings["log"] == "secular")
+    readings.loc[gone, "status"] = "left_out"
+    row_of = (methods["session"] == "s002") & (methods["particle"] == "p02") & (methods["method"] == "secular")
+    methods.loc[row_of, ["status", "reason"]] = ["no_oscillation", "the drag is too high"]
+    readings.to_csv(tmp_path / "copy/readings/s002.csv", index=False)
+    methods.to_csv(tmp_path / "copy/methods.csv", index=False)
+    text = " ".join(explain(tmp_path / "copy", "s002", "p02").split())
+    assert (
+        f"{gone.sum()} readings, 0 used, 0 of these flagged, 0 excluded, {gone.sum()} left out by the reduction" in text
+    )
+    lines = readings.loc[gone, "line"].astype(int)
+    assert f"lines {lines.min()} to {lines.max()} left out: the drag is too high" in text
 
 
 def test_an_unknown_session_offers_the_nearest(results: Path) -> None:

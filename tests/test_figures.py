@@ -9,30 +9,31 @@ from typing import Any
 import pytest
 from fake_record import write_record
 
-from reduction import campaignfigures, figures, figurestyle
-from reduction.groups import by_group
+from reduction import figures, figurestyle
 from reduction.sheets import rows_of
 from reduction.tables import read_table
 from reduction.wholefile import read_json
 
 Held = tuple[list[dict[str, Any]], list[dict[str, Any]], dict[str, Any], list[dict[str, Any]]]
+SVG = "{http://www.w3.org/2000/svg}"
 
 
 @pytest.fixture(scope="module")
 def held(tmp_path_factory: pytest.TempPathFactory) -> Held:
     folder = write_record(tmp_path_factory.mktemp("record"), particles=4)
-    readings, agreement, particles = (
-        rows_of(read_table(folder / f"{name}.csv")) for name in ("readings", "agreement", "particles")
+    readings, agreement, methods = (
+        rows_of(read_table(folder / f"{name}.csv")) for name in ("readings", "agreement", "methods")
     )
-    return readings, agreement, read_json(folder / "session.json")["curves"], particles
+    return readings, agreement, read_json(folder / "session.json")["curves"], methods
 
 
 def drawn(held: Held, particle: str, drawer: figures.ParticleFigures | None = None) -> figurestyle.Drawing:
-    readings, agreement, curves, _ = held
+    readings, agreement, curves, methods = held
     with figurestyle.styled():
         made = (drawer or figures.ParticleFigures()).draw(
             "s001", particle, [r for r in readings if r["particle"] == particle], curves.get(particle, {}),
             [a for a in agreement if a["particle"] == particle],
+            [m for m in methods if m["particle"] == particle],
         )  # fmt: skip
     assert made is not None
     return made
@@ -74,9 +75,44 @@ def test_curves_drawn_are_those_of_the_record_with_gaps_where_no_frequency_exist
     assert len(lines) == sum(len(curve["dc_V"]) for curve in held[2]["p01"]["height"])
 
 
-def test_agreement_drawn_is_that_of_the_table(held: Held) -> None:
-    twin = [row[5] for row in drawn(held, "p03").rows if row[2] == "agreement"]
-    assert twin == [a["normalized_error"] for a in held[1] if a["particle"] == "p03"]
+def test_pulls_drawn_are_those_of_the_tables(held: Held) -> None:
+    rows = [row for row in drawn(held, "p03").rows if row[2] == "pulls"]
+    pairs = [row[5] for row in rows if row[4] == "normalized_error"]
+    assert pairs == [a["normalized_error"] for a in held[1] if a["particle"] == "p03"]
+    alone = {row[3]: row[5] for row in rows if row[4] == "normalized_residual"}
+    assert alone == {
+        m["method"]: m["normalized_residual"]
+        for m in held[3]
+        if m["particle"] == "p03" and math.isfinite(m["normalized_residual"])
+    }
+    assert len(alone) == 4
+
+
+def test_a_pair_is_marked_where_its_normalised_error_leaves_one(held: Held) -> None:
+    """Twice the normalised error is drawn, so that the band of 2 holds what is within 1."""
+    base = held[1][0]
+    for error, marked in ((0.99, False), (1.01, True)):
+        with figurestyle.styled():
+            made = figures.ParticleFigures().draw(
+                "s001", "p01", [r for r in held[0] if r["particle"] == "p01" and r["log"] == "balance"], {},
+                [{**base, "normalized_error": error}],
+            )  # fmt: skip
+        assert made is not None
+        name = f"{base['method_a']} \N{MINUS SIGN} {base['method_b']}"
+        label = next(n for n in ElementTree.fromstring(made.svg).iter(f"{SVG}text") if n.text == name)
+        assert (figurestyle.COLOURS[1].lower() in (label.get("style") or "").lower()) is marked
+
+
+def test_readings_left_out_by_the_reduction_are_drawn_hollow_and_do_not_set_the_scale(held: Held) -> None:
+    own = [dict(r) for r in held[0] if r["particle"] == "p02" and r["log"] == "secular"]
+    hollow = "fill: #ffffff"
+    with figurestyle.styled():
+        kept = figures.ParticleFigures().draw("s001", "p02", own, {}, [])
+        gone = figures.ParticleFigures().draw("s001", "p02", [{**r, "status": "left_out"} for r in own], {}, [])
+    assert kept is not None
+    assert gone is not None
+    assert gone.svg.count(hollow) > kept.svg.count(hollow)
+    assert {row[10] for row in gone.rows if row[4] == "reading"} == {"left_out"}
 
 
 def test_a_drawing_does_not_depend_on_what_was_drawn_before(held: Held) -> None:
@@ -131,28 +167,26 @@ def test_lettering_is_text_in_the_face_of_the_page(held: Held) -> None:
     svg = drawn(held, "p01").svg
     assert "Libertinus Serif" in svg
     assert "STIX" not in svg
-    texts = [node.text for node in ElementTree.fromstring(svg).iter("{http://www.w3.org/2000/svg}text")]
+    texts = [node.text for node in ElementTree.fromstring(svg).iter(f"{SVG}text")]
     assert "dc voltage / V" in texts
     assert "secular frequency / Hz" in texts
 
 
-def test_all_drawn_text_lies_inside_the_figure(held: Held) -> None:
+@pytest.mark.parametrize("low", [False, True])
+def test_all_drawn_text_lies_inside_the_figure(held: Held, low: bool) -> None:
     """Text boxes as matplotlib measures them in the nearest face it has."""
-    readings, agreement, curves, _ = held
-    with figurestyle.styled():
-        drawer = figures.ParticleFigures()
-        drawer.draw("s001", "p01", [r for r in readings if r["particle"] == "p01"], curves["p01"],
-                    [a for a in agreement if a["particle"] == "p01"])  # fmt: skip
-        for figure, axes in drawer._sheets.values():
-            figure.canvas.draw()
-            width, height = figure.bbox.width, figure.bbox.height
-            for panel in axes.values():
-                box = panel.get_tightbbox()
-                assert box is not None
-                assert box.x0 >= -1
-                assert box.x1 <= width + 1
-                assert box.y0 >= -1
-                assert box.y1 <= height + 1
+    drawer = figures.ParticleFigures(low=low)
+    drawn(held, "p01", drawer)
+    for figure, axes in drawer._sheets.values():
+        figure.canvas.draw()
+        width, height = figure.bbox.width, figure.bbox.height
+        for panel in axes.values():
+            box = panel.get_tightbbox()
+            assert box is not None
+            assert box.x0 >= -1
+            assert box.x1 <= width + 1
+            assert box.y0 >= -1
+            assert box.y1 <= height + 1
 
 
 def test_labels_are_moved_apart_and_keep_their_order() -> None:
@@ -167,39 +201,5 @@ def test_disagreement_off_the_scale_is_drawn_at_its_edge_and_printed(held: Held)
             "s001", "p01", [r for r in held[0] if r["particle"] == "p01"], held[2]["p01"], [far]
         )
     assert made is not None
-    assert "+37.25" in made.svg
-    assert [row[5] for row in made.rows if row[2] == "agreement"] == [37.25]
-
-
-def grouped(held: Held, factor: float = 1.0) -> figurestyle.Drawing:
-    particles = [dict(p) for p in held[3]]
-    twice = particles + [{**p, "session": "s002"} for p in particles]
-    for k, p in enumerate(twice):
-        p["charge_to_mass_C_per_kg"] *= factor if k == 1 else 1.0
-    group_of = {(p["session"], p["particle"]): "p$t$fe_<b>" for p in twice}
-    results = by_group(twice, group_of, "charge_to_mass_C_per_kg", components={}, coverage=0.95)
-    with figurestyle.styled():
-        made = campaignfigures.by_group("charge-to-mass ratio", "(C kg⁻¹)", 1.0, results, twice, group_of,
-                                        "charge_to_mass_C_per_kg", "u_charge_to_mass_C_per_kg")  # fmt: skip
-    assert made is not None
-    return made
-
-
-def test_groups_are_drawn_with_every_particle_and_both_means(held: Held) -> None:
-    made = grouped(held)
-    kinds = [row[3] for row in made.rows]
-    measured = [p["charge_to_mass_C_per_kg"] for p in held[3] if math.isfinite(p["charge_to_mass_C_per_kg"])]
-    assert [row[4] for row in made.rows if row[3] == "particle"] == measured * 2
-    assert kinds.count("session_mean") == 2
-    assert kinds.count("group_mean") == 1
-
-
-def test_values_over_many_decades_are_drawn_on_a_signed_logarithmic_axis(held: Held) -> None:
-    assert "logarithmic beyond" not in grouped(held).svg
-    assert "logarithmic beyond" in grouped(held, 1e4).svg
-
-
-def test_group_names_are_drawn_as_they_are(held: Held) -> None:
-    svg = grouped(held).svg
-    texts = [node.text for node in ElementTree.fromstring(svg).iter("{http://www.w3.org/2000/svg}text")]
-    assert "p$t$fe_<b>" in texts
+    assert "+74.5" in made.svg
+    assert [row[5] for row in made.rows if row[2] == "pulls"] == [37.25]

@@ -22,12 +22,14 @@ settings schemas logs check newcampaign
 inputs methods fits adjustment charge starts budget agreement preparation slips solution strain
 shapes noise propagation montecarlo outcome window sanity refits validation
 tables correlated multiplicity randomeffects sessionmeans groupmeans pairs ranks transitivity trends comparison
-groups unseen intrinsic histogram planning comparisonwords
+unseen intrinsic histogram planning comparisonwords groupbudget comparisontables
 records resultrows readingrows curves sessionfacts session
 simulationplan simulationtruth simulationreadings simulationfiles simulationexample simulation
-typeset sheets figurestyle panels figures campaignfigures sessiontables campaigntables sessionreport campaignreport
+typeset sheets figurestyle panels figures campaignfigures comparisonfigures chargefigures
+limits sessiontables sessionbudget glance campaigntables sessionreport
+comparisonpages comparisonsheets comparisonreport campaignreport
 report findings equations explain
-digests batches resultsfolder rundiff assembly steps running command
+digests batches resultsfolder rundiff sessionsneeded assembly steps running command
 """
 ORDER = _ORDER.split()
 

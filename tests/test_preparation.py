@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 
 import numpy as np
-import pytest
 from small_campaign import BALANCE, FILES, HEIGHT, SESSION, changed, check
 
 from reduction.preparation import prepare

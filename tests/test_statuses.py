@@ -763,6 +763,8 @@ NASTY = {
     "vacuum": lambda one: one.session(air={"pressure_hPa": "1e-9"}),
     "nanometres": lambda one: one.species(diameter_um="1.0(1)e-3", diameter_spread_um="1e-4"),
 }
+
+
 @pytest.mark.parametrize("name", NASTY)
 def test_nasty_but_valid_input_ends_in_words(edit, light, name):
     record = NASTY[name](edit(light)).reduce()
@@ -813,3 +815,16 @@ def test_a_hundred_particles(tmp_path):
     of_mean = math.sqrt((relative.groupby(parts["input"]).sum() ** 2).sum()) / len(table)
     of_one = (table["u_charge_to_mass_C_per_kg"] / table["charge_to_mass_C_per_kg"].abs()).mean()
     assert 0.9 * of_one < of_mean <= of_one
+
+
+@pytest.mark.parametrize("adjust", ["session", "particle"])
+def test_an_excluded_session_gives_no_number_and_says_why(edit, pair, adjust):
+    record = edit(pair).campaign(adjust=adjust).session(exclude="lamp failed").reduce()
+    particles, readings = record.tables["particles"], record.tables["readings"]
+    assert len(particles) > 0
+    assert set(particles["status"]) == {"excluded"}
+    assert particles[list(NUMBERS)].isna().all(axis=None)
+    assert set(readings["exclude"]) == {"session: lamp failed"}
+    assert set(readings["status"]) == {"excluded"}
+    assert len(record.tables["components"]) == 0
+    assert (record.facts["status"], record.facts["reason"]) == ("excluded", "lamp failed")

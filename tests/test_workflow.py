@@ -18,11 +18,14 @@ from pathlib import Path
 import pytest
 from standin import ROOT, Bench, add_session, campaign, checkout, contents
 
-from reduction.tables import COLUMNS
+from reduction import comparison, comparisontables
+from reduction.tables import COLUMNS, read_table, table_text
+from reduction.wholefile import read_json
 
 pytestmark = pytest.mark.workflow
 
 SESSIONS = [f"s{number:02d}" for number in range(1, 13)]  # enough for two batches
+COMPARISON = [f"{name}.csv" for name in comparisontables.TABLES]
 TABLES = ["agreement.csv", "budget.csv", "components.csv", "inputs.csv", "methods.csv", "particles.csv"]
 
 
@@ -58,7 +61,7 @@ def good(ran: subprocess.CompletedProcess[str]) -> None:
 
 
 def test_run_gives_every_file_of_the_contract(finished: Bench) -> None:
-    expected = [*TABLES, "report.pdf", "run.json"]
+    expected = [*TABLES, *COMPARISON, "comparison.json", "report.pdf", "run.json"]
     expected += [
         f"{folder}/{name}{end}" for name in SESSIONS for folder, end in (("readings", ".csv"), ("sessions", ".pdf"))
     ]
@@ -382,7 +385,7 @@ def test_lint_remarks_on_nothing_but_environments(bench: Bench) -> None:
     )  # fmt: skip
     remarks = [line.strip() for line in (ran.stdout + ran.stderr).splitlines() if line.startswith("    * ")]
     # the environment is the one the program is installed in, pinned by requirements.lock
-    assert remarks == 7 * ["* Specify a conda environment or container for each rule.:"]
+    assert remarks == 8 * ["* Specify a conda environment or container for each rule.:"]
 
 
 @pytest.fixture(scope="module")
@@ -407,6 +410,28 @@ def test_example_runs_to_its_reports(example: Bench) -> None:
         head, *rows = (results / name).read_text().splitlines()
         assert head == ",".join(COLUMNS[name.removesuffix(".csv")])
         assert rows
+
+
+def test_example_is_compared_as_a_direct_call_of_the_library_compares(example: Bench) -> None:
+    results = example.results
+    records = (results / ".motescale" / "records").glob("*/*/session.json")
+    facts = {path.parent.parent.name: read_json(path) for path in records}
+    particles, components = (read_table(results / f"{name}.csv") for name in ("particles", "components"))
+    found = comparison.compare(particles, components, facts, quantity="surface_charge_density", by="charged_with")
+    for name, columns, rows in (
+        ("comparison", comparison.comparison_columns(found), comparison.comparison_rows(found)),
+        ("contrasts", comparison.contrast_columns(), comparison.contrast_rows(found)),
+        ("trends", comparison.COLUMNS["trends"], comparison.trend_rows(found)),
+    ):
+        text = (results / f"{name}.csv").read_text()
+        assert text == table_text(columns, rows)
+        assert text.startswith(",".join(COLUMNS.get(name, ())))
+    groups = read_table(results / "comparison.csv")
+    assert groups["group"].tolist() == ["PTFE", "glass", "nylon", "wool"]
+    assert groups["rank_1"].sum() == pytest.approx(1.0)
+    assert len(read_table(results / "contrasts.csv")) == 6
+    assert read_table(results / "charge_summary.csv")["lost"].sum() == 2  # the example's lost.csv
+    assert read_table(results / "histogram.csv")["count"].sum() == len(read_table(results / "charge_distribution.csv"))
 
 
 def test_example_has_one_row_for_each_shared_input(example: Bench) -> None:

@@ -28,6 +28,7 @@ from reduction.session import reduce_campaign, reduce_session
 from reduction.settings import Campaign
 from reduction.simulation import Habits, simulate_campaign
 from reduction.simulationplan import REGIMES, Plan
+from reduction.simulationtruth import ELEMENTARY_CHARGE
 
 PULLED = ("charge_to_mass_C_per_kg", "drag_rate_per_s", "mass_kg", "charge_e")
 INTERVALS = {
@@ -44,6 +45,8 @@ SHAPES = {  # the largest contributions of room air, in shapes other than normal
     "shape_factor": "{value: 1, half_width: 0.01, shape: rectangular}",
 }
 
+COARSE = {"reading": {"balance_voltage_V": 0.4, "dc_voltage_V": 0.03, "height_mm": 0.01, "secular_frequency_Hz": 0.1}}
+
 
 @dataclass(frozen=True)
 class Case:
@@ -55,7 +58,7 @@ class Case:
     particles: int = 4
     options: Mapping[str, str] = field(default_factory=dict)
     habits: Habits = Habits()
-    stated: Mapping[str, str] = field(default_factory=dict)  # fields of the regime
+    stated: Mapping[str, object] = field(default_factory=dict)  # fields of the regime
 
     def simulate(self, folder: Path, seed: int) -> pd.DataFrame:
         """Write one campaign of this kind; its true particles, by session and particle."""
@@ -106,7 +109,7 @@ def joint_chi_square(rows: pd.DataFrame, components: pd.DataFrame) -> tuple[floa
     for (session, particle), row in rows.iterrows():
         for result, column in JOINT.items():
             if np.isfinite(row[f"u_{column}"]):
-                true = row[f"true_{column}"] if result == "charge_to_mass" else row["true_charge_e"] * 1.602176634e-19
+                true = row[f"true_{column}"] if result == "charge_to_mass" else row["true_charge_e"] * ELEMENTARY_CHARGE
                 errors.append(math.log(row[column] / true))
                 sizes.append(row[column])
                 keys.append((session, particle, result))
@@ -138,16 +141,19 @@ def independent(rows: pd.DataFrame) -> pd.DataFrame:
 
 
 SCATTER = Habits(unstated=("balance_voltage_V", "height_mm", "secular_frequency_Hz"), balance_readings=4)
+ALONE = {"adjust": "particle"}
 CASES = [
-    *(Case("session", regime, options={"adjust": "session"}) for regime in REGIMES),
-    *(Case("particle", regime, options={"adjust": "particle"}) for regime in REGIMES),
-    *(Case("campaign, 3 sessions of 3", regime, 3, 3, {"adjust": "campaign"}) for regime in REGIMES),
-    *(Case("u from scatter", regime, habits=SCATTER) for regime in REGIMES),
-    *(Case("twice the stated scatter, inflate", regime, options={"scatter": "inflate"}, habits=Habits(scatter=2.0))
-      for regime in REGIMES),
-    Case("8 beads", "room_air_dense", particles=8),
-    Case("8 beads, particle", "room_air_dense", particles=8, options={"adjust": "particle"}),
-    Case("shapes not normal", "room_air_light", stated=SHAPES),
+    *(Case("session", regime) for regime in REGIMES),
+    *(Case("particle", regime, options=ALONE) for regime in REGIMES),
+    *(Case("campaign of 2 sessions", regime, 2, 3, {"adjust": "campaign"}) for regime in REGIMES),
+    *(Case("session, u from scatter", regime, habits=SCATTER) for regime in REGIMES),
+    *(Case("session, scatter twice the stated, inflate", regime, options={"scatter": "inflate"},
+           habits=Habits(scatter=2.0)) for regime in REGIMES),
+    Case("session, inputs not normal", "room_air_light", stated=SHAPES),
+    Case("session of 8", "room_air_dense", particles=8),
+    Case("8, particle", "room_air_dense", particles=8, options=ALONE),
+    Case("session of 8, coarse readings, no lot", "room_air_dense", 1, 8, {"lot": "unused"}, stated=COARSE),
+    Case("8, particle, coarse readings, no lot", "room_air_dense", 1, 8, {"lot": "unused"} | ALONE, stated=COARSE),
 ]  # fmt: skip
 
 
@@ -179,7 +185,7 @@ def line(case: Case, rows: pd.DataFrame) -> str:
 
 def main() -> None:
     """Print the table."""
-    campaigns = int(sys.argv[1]) if len(sys.argv) > 1 else 400
+    campaigns = int(sys.argv[1]) if len(sys.argv) > 1 else 180
     cores = int(sys.argv[2]) if len(sys.argv) > 2 else min(2, os.cpu_count() or 1)
     print(f"Intervals of 95 %: how often they hold the truth [%], {campaigns} campaigns a row\n")
     heads = ["regime", "reduced as", "campaigns", "particles", "q/m", "drag", "mass", "charge", "pull of q/m: mean, sd"]

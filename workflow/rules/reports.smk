@@ -19,6 +19,7 @@ rule session_reports:
 rule report:
     input:
         rules.tables.output,
+        rules.comparison.output,
         expand(rules.session_reports.output, batch=PLAN.batches),
     output:
         "report.pdf",

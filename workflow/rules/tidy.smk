@@ -6,6 +6,7 @@
 rule tidy:
     input:
         rules.tables.output,
+        rules.comparison.output,
         rules.report.output,
         rules.session_files.output,
     output:
