@@ -74,7 +74,14 @@ def _strip_words(pages: Pages) -> str:
 
 def _pair_words(pages: Pages) -> str:
     least = [float(row["smallest_p"]) for row in pages.pairs]
-    tested = [row for row in pages.pairs if math.isfinite(row["p"])]
+    reach = ""
+    if least:
+        most = f" to {max(least):.2g}" if max(least) > min(least) else ""
+        reach = (
+            f" With so few sessions, exchanging them between two groups could reach no p below {min(least):.2g}{most}."
+        )
+    if not any(math.isfinite(row["p"]) for row in pages.pairs):
+        return "No pair has two sessions in each group: nothing is tested." + reach
     text = (
         f"Heavy bar: interval of {100 * pages.coverage:g} % coverage; thin bar: all differences at once. The p "
         "is Student's from session means, with few-session degrees of freedom, Holm's correction over all pairs. What "
@@ -83,13 +90,7 @@ def _pair_words(pages: Pages) -> str:
     )
     if len(pages.pairs) > comparisonsheets.PAIRS_MOST:
         text += f" Of {len(pages.pairs)} pairs those of the smallest p are shown; contrasts.csv has them all."
-    if least:
-        text += f" With so few sessions, exchanging them between two groups could reach no p below {min(least):.2g}" + (
-            f" to {max(least):.2g}." if max(least) > min(least) else "."
-        )
-    if not tested:
-        text = "No pair has two sessions in each group: nothing is tested." + text[text.find(" With so few") :]
-    return text
+    return text + reach
 
 
 def drawings(pages: Pages, particles: Sequence[Row], facts: Facts) -> dict[str, figurestyle.Drawing]:

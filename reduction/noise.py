@@ -12,6 +12,7 @@ from reduction.methods import LN_GAMMA, LN_S, SHAPE, Array
 
 ROWS = [LN_S, LN_GAMMA, SHAPE]  # private unknowns that results depend on
 NEGLIGIBLE = 1e-9  # of u: what contributes less is not drawn
+LEAST_PIVOT = 1e-11  # of a variance, left over: below it is rounding
 KNOWN = "known"  # group of the logs with stated u, and of the private unknowns' priors
 
 
@@ -93,10 +94,18 @@ def noise_alone(
 
 
 def covariance_root(square: Array) -> Array:
-    """Square root of a covariance whose rows have different units, columns from large to small."""
+    """Lower triangular square root of a covariance whose rows have different units, without its empty columns.
+
+    Unlike a root by eigenvectors it follows small changes of the covariance: the same draws give nearly the same results.
+    """
     size = np.sqrt(np.clip(np.diag(square), 0.0, None))
     scale = np.where(size > 0.0, size, 1.0)
-    values, vectors = np.linalg.eigh(square / np.outer(scale, scale))
-    order = [one for one in np.argsort(values)[::-1] if values[one] > NEGLIGIBLE**2]
-    root: Array = scale[:, None] * vectors[:, order] * np.sqrt(values[order])
+    left, columns = square / np.outer(scale, scale), []
+    for place in range(len(left)):
+        if left[place, place] > LEAST_PIVOT:
+            column = left[:, place] / np.sqrt(left[place, place])
+            column[:place] = 0.0
+            left = left - np.outer(column, column)
+            columns.append(column)
+    root: Array = scale[:, None] * np.array(columns).reshape(-1, len(left)).T
     return root

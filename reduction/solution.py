@@ -96,7 +96,9 @@ def fit_session(prepared: Prepared, scatter_policy: str) -> Reduced:
     alone, is_open, reasons = _alone(model, starts, theta, flags)
     alone = _without_impossible_secular(alone, fits, is_open, reasons, flags)
     if scatter_policy == "inflate":
-        alone = adjust_alone(_inflated(alone, fits, scatter, flags), alone.theta, near=True)
+        inflated = _inflated(alone, fits, scatter, flags)
+        if inflated is not alone.model:
+            alone = adjust_alone(inflated, alone.theta, near=True)
     dof = alone_dof(alone)
     for index in range(count):
         if not scatter and dof[index] > 0 and stats.chi2.sf(alone.cost[index], dof[index]) < 0.01:
@@ -241,7 +243,7 @@ def _inflated(
     Chi-square is that of the adjusted values: a log is not to be blamed for errors of the shared inputs, which the
     method alone holds at their estimates.
     """
-    logs = dict(alone.model.logs)
+    logs, larger = dict(alone.model.logs), False
     for name, line in alone.lines.items():
         if name in scatter or name == "diameter":
             continue
@@ -252,8 +254,9 @@ def _inflated(
             if fit.dof > 0 and chi_square[index] > fit.dof:
                 factor[index] = np.sqrt(chi_square[index] / fit.dof)
                 flags[index].add("inflated")
+                larger = True
         logs[name] = replace(log, u=log.u * factor[log.particle], u_voltage=log.u_voltage * factor[log.particle])
-    return replace(alone.model, logs=logs)
+    return replace(alone.model, logs=logs) if larger else alone.model
 
 
 def _left_out(fits: dict[str, list[MethodFit]], name: str, index: int, flags: list[set[str]]) -> None:
