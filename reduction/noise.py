@@ -96,7 +96,7 @@ def noise_alone(
 def covariance_root(square: Array) -> Array:
     """Lower triangular square root of a covariance whose rows have different units, without its empty columns.
 
-    Unlike a root by eigenvectors it follows small changes of the covariance: the same draws give nearly the same results.
+    Unlike a root by eigenvectors it follows small changes of the covariance: equal draws give nearly equal results.
     """
     size = np.sqrt(np.clip(np.diag(square), 0.0, None))
     scale = np.where(size > 0.0, size, 1.0)

@@ -138,7 +138,8 @@ def _reason(log: Path) -> str:
     """Error the workflow itself ended with, as far as its steps have not said it."""
     text = log.read_text(encoding="utf-8", errors="replace")
     found = re.search(r"^WorkflowError[^\n]*\n(.*)", text, re.MULTILINE | re.DOTALL)
-    said = found[1].strip() if found else ""
+    lines = found[1].splitlines() if found else []
+    said = "\n".join(line for line in lines if not re.match(r'\s*File ".*", line \d+', line)).strip()
     return "" if said in ("", _SOME_JOB) else said + "\n"
 
 
