@@ -39,8 +39,10 @@ ROUNDS = 60
 SETTLED = 1e-6  # of u: settled when the next step promises to lower chi-square by less than its square
 LONGEST = 1.0  # longest step in a logarithm
 FLAT = 1e-3  # a valley along which chi-square would fall by less than the square of this is not walked to its end
-SETTLED_TOGETHER = 1e-4  # the same for a group, where rounding of thousands of readings adds up
-FARTHEST = 4.0  # longest step of a shared input, in its u
+SETTLED_TOGETHER = 3e-4  # the same for a group, where rounding of thousands of readings adds up
+FARTHEST = 4.0  # longest step of a shared input, in its u, while a particle is adjusted alone
+CLOSE = 30.0  # root of the fall in chi-square promised, below which successive steps are compared
+FARTHEST_TOGETHER = 40.0  # the same for a group
 
 
 @dataclass(frozen=True)
@@ -405,11 +407,17 @@ def adjust_together(models: list[Model], starts: list[Array]) -> list[Adjusted]:
         member.renew(xi)
         members.append(member)
     damping, settled = 1e-6, False
+    stretch, last = 1.0, None
     for _ in range(ROUNDS):
         cost = sum(one.cost() for one in members) + float(xi @ xi)
-        steps, move, size = _group_step(members, xi, damping)
+        parts, move, size = _group_step(members, xi, damping)
+        if stretch == 1.0 and last is not None and size < CLOSE:
+            stretch = _stretch(move, last)
+        last = move
+        move = stretch * move
+        steps = [own + response @ move[one.columns] for one, (own, response) in zip(members, parts, strict=True)]
         factor = min([1.0, *(float(_shortened(step).min()) for step in steps if len(step))])
-        factor = min(factor, FARTHEST / max(float(np.abs(move).max(initial=0.0)), FARTHEST))
+        factor = min(factor, FARTHEST_TOGETHER / max(float(np.abs(move).max(initial=0.0)), FARTHEST_TOGETHER))
         while True:
             trial = sum(
                 one.trial_cost(one.theta + factor * step, xi + factor * move)
@@ -440,19 +448,25 @@ def _reduced(member: _Member) -> tuple[Array, Array, Array, Array, Array, Array]
     return inverse, response, own[:, :, 0], square, right, gradient
 
 
-def _group_step(members: list[_Member], xi: Array, damping: float) -> tuple[list[Array], Array, float]:
-    """Gauss-Newton steps of every session and of the shared inputs, and the root of the fall in chi-square promised."""
+def _stretch(move: Array, last: Array) -> float:
+    """Length of further steps when each leaves a share r of the error to the next: 1 / (1 - r), Aitken's process.
+
+    Gauss-Newton leaves the curvature of the equations out, which makes its steps too long or too short by one ratio.
+    """
+    ratio = float(move @ last) / max(float(last @ last), 1e-300)
+    return 1.0 / (1.0 - ratio) if abs(ratio) < 0.4 else 1.0
+
+
+def _group_step(members: list[_Member], xi: Array, damping: float) -> tuple[list[tuple[Array, Array]], Array, float]:
+    """Gauss-Newton steps: of each session its own and its response, of the inputs; root of the fall in chi-square."""
     square, right = np.eye(len(xi)) * (1.0 + damping), -xi
     parts = [_reduced(one) for one in members]
     for one, part in zip(members, parts, strict=True):
         square[np.ix_(one.columns, one.columns)] += part[3]
         right[one.columns] += part[4]
     move = np.linalg.solve(square, right)
-    steps, promised = [], float(move @ right)
-    for one, (_, response, own, _, _, gradient) in zip(members, parts, strict=True):
-        steps.append(own + response @ move[one.columns])
-        promised += float((gradient * own).sum())
-    return steps, move, float(np.sqrt(abs(promised)))
+    promised = float(move @ right) + sum(float((part[5] * part[2]).sum()) for part in parts)
+    return [(part[2], part[1]) for part in parts], move, float(np.sqrt(abs(promised)))
 
 
 def _finished(members: list[_Member], xi: Array, group: tuple[Input, ...], settled: bool) -> list[Adjusted]:

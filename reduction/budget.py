@@ -269,7 +269,7 @@ def _root(square: Array) -> Array:
 
 
 def budget_rows(
-    results: Results, session: str, names: list[str], scatter: Mapping[str, float]
+    results: Results, session: str, names: list[str], scatter: Mapping[str, float], *, pooled: bool = False
 ) -> Iterator[dict[str, object]]:
     """Rows of budget.csv: each u broken down by physical input, own logs and, last, the other particles' readings."""
     for index, name in enumerate(names):
@@ -291,6 +291,8 @@ def budget_rows(
                         "sensitivity": component / one.written_u,
                         "component": component,
                         "share": part**2 / variance,
+                        "scope": one.scope,
+                        "degrees_of_freedom": one.quantity.dof,
                     }
             left = variance - float((results.by_input[index, place] ** 2).sum())
             for log, parts in results.own.items():
@@ -306,6 +308,8 @@ def budget_rows(
                         "sensitivity": np.nan,
                         "component": np.sqrt(part) * abs(value),
                         "share": part / variance,
+                        "scope": "particle",
+                        "degrees_of_freedom": scatter.get(log, np.inf),
                     }
             if not results.alone:
                 part = max(left, 0.0)
@@ -318,4 +322,6 @@ def budget_rows(
                     "sensitivity": np.nan,
                     "component": np.sqrt(part) * abs(value),
                     "share": part / variance,
+                    "scope": "campaign" if pooled else "session",
+                    "degrees_of_freedom": np.inf,
                 }

@@ -36,7 +36,8 @@ class Readings:
 
     `observed` is the reading itself, uncorrected; `u` its standard uncertainty without that of the dc voltage;
     `elapsed` the time since the particle's mean balance time [s], 0 where the charge is taken as constant.
-    For the diameter, `lot` marks rows that stand for the lot's distribution instead of an own diameter.
+    For the diameter, `lot` marks rows that stand for the lot's distribution instead of an own diameter; those are in
+    logarithms: a plain difference would shrink with the scale of sizes, and many particles would pull that down.
     """
 
     particle: NDArray[np.intp]
@@ -295,7 +296,9 @@ def with_reynolds(setting: Setting, log: Readings, theta: Array, sign: Array) ->
             getattr(scaled, name)[0][known] for name in ("drive", "drag", "added_mass", "history", "omega")
         )
         gain = float(around.values["gain_height"][0, 0])
-        mean = (gain * log.observed - _at(theta[None, :, ORIGIN], log.particle)[0])[known]
+        linear = replace(log, reynolds=np.zeros(len(log)))
+        height = predict_height(setting, around, particle, theta[None], linear).reading[0]
+        mean = (gain * height - _at(theta[None, :, ORIGIN], log.particle)[0])[known]
         found = motion.reynolds_shift(mean, h, b, omega, diameter[known], rho, eta, added, history)
         shift[known] = np.where(np.isfinite(found), found, 0.0)
     return replace(log, reynolds=shift)
@@ -315,7 +318,7 @@ def predict_secular(
 def predict_diameter(
     setting: Setting, around: Surroundings, particle: Particle, theta: Array, log: Readings
 ) -> Prediction:
-    """Own diameter [m] that reads, or how far the particle's lies from the lot's mean."""
+    """Own diameter [m] that reads, or how far the particle's lies from the lot's mean, ln(d / mean) [1]."""
     at = log.particle
     diameter = _at(particle.diameter, at)
     reading = diameter / _at(around.values["gain_diameter"], at)
@@ -323,7 +326,7 @@ def predict_diameter(
         role = f"lot_diameter:{name}"
         own = log.lot & np.array([setting.species[one] == name for one in at], dtype=bool)
         if own.any():
-            reading = np.where(own, diameter - _at(around.values[role], at), reading)
+            reading = np.where(own, np.log(diameter / _at(around.values[role], at)), reading)
     return Prediction(reading)
 
 

@@ -17,7 +17,7 @@ from reduction.montecarlo import result_intervals
 from reduction.preparation import Prepared
 from reduction.settings import Campaign, Session
 from reduction.solution import Reduced, is_determined
-from reduction.strain import Strain, strain_of
+from reduction.strain import OddOneOut, Strain, odd_one_out, strain_of
 
 S, GAMMA, DIAMETER, MASS, CHARGE, DENSITY = range(6)  # places of the results, in the order of budget.RESULTS
 
@@ -56,21 +56,30 @@ class Outcome:
 
 
 def outcome_of(
-    campaign: Campaign, session: Session, logs: Logs, reduced: Reduced, adjusted: Adjusted, chosen: Indices
+    campaign: Campaign,
+    session: Session,
+    logs: Logs,
+    reduced: Reduced,
+    adjusted: Adjusted,
+    chosen: Indices,
+    odd: OddOneOut | None = None,
 ) -> Outcome:
-    """Results, degrees of freedom and intervals of the `chosen` particles, as they were adjusted."""
+    """Results, degrees of freedom and intervals of the `chosen` particles, as they were adjusted.
+
+    `odd` is the particle that strains a whole campaign most; for a session adjusted by itself it is found here.
+    """
     prepared, options = reduced.prepared, campaign.options
     names = [prepared.names[index] for index in chosen]
     alone = options.adjust == "particle" or adjusted is reduced.alone
     size = own_sizes(prepared, chosen) if options.mass_from == "diameter" else None
     results = results_of(adjusted, alone=alone, size=size)
-    dof = budget.effective_dof(results, reduced.scatter)
+    dof = budget.effective_dof(results, reduced.noise_dof)
     low, high = budget.interval(results, dof, options.coverage_probability)
     drawn = result_intervals(
         results,
         session=session.id,
         names=names,
-        log_dof=reduced.scatter,
+        log_dof=reduced.noise_dof,
         trials=options.monte_carlo_trials,
         seed=options.seed,
         coverage=options.coverage_probability,
@@ -101,7 +110,7 @@ def outcome_of(
         sure,
         sure[:, 1] if size is None else np.isfinite(size.u),
         drag_alone=drag_alone,
-        strain=None if alone else strain_of(adjusted, names, leave_one_out=options.adjust == "session"),
+        strain=None if alone else strain_of(adjusted, names, odd or odd_one_out([adjusted], [names])),
     )
 
 
@@ -130,5 +139,5 @@ def own_sizes(prepared: Prepared, chosen: Indices) -> OwnSize:
             lot[row] = log.lot[at]
             kind = prepared.species[int(index)]
             diameter[row] = estimate[f"lot_diameter:{kind}"] if log.lot[at] else log.observed[at]
-            u[row] = log.u[at]
+            u[row] = log.u[at] * (diameter[row] if log.lot[at] else 1.0)
     return OwnSize(diameter, u, lot)

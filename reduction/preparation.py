@@ -170,7 +170,7 @@ def _diameters(
         if np.isfinite(diameter) and np.isfinite(u):
             rows.append((index, diameter, u, False))
         elif lot.diameter is not None and lot.diameter_spread is not None and campaign.options.lot == "prior":
-            rows.append((index, 0.0, lot.diameter_spread, True))
+            rows.append((index, 0.0, lot.diameter_spread / lot.diameter.estimate, True))
     count = len(rows)
     empty = np.zeros(count)
     return Readings(

@@ -9,10 +9,11 @@ from scipy import constants
 
 from reduction import motion
 from reduction.logs import Logs
-from reduction.methods import particle_properties, scaled_motion, surroundings
+from reduction.methods import DRIFT, particle_properties, scaled_motion, surroundings
 from reduction.outcome import CHARGE, MASS, Outcome
 
 NEIGHBOUR_LIMIT = 0.01  # force of a neighbour over weight beyond which the balance is flagged
+FASTEST_DRIFT = 0.05  # relative, per hour: ten times what some days of decay make
 
 
 def notes_of(outcome: Outcome) -> Iterator[tuple[int, str, str]]:
@@ -20,6 +21,7 @@ def notes_of(outcome: Outcome) -> Iterator[tuple[int, str, str]]:
     yield from _neighbours(outcome)
     yield from _outside_window(outcome)
     yield from _coarse(outcome)
+    yield from _fast_drift(outcome)
 
 
 def _neighbours(outcome: Outcome) -> Iterator[tuple[int, str, str]]:
@@ -81,3 +83,16 @@ def _stepped(steps: np.ndarray) -> bool:
     """Whether all differences are whole multiples of the smallest."""
     ratio = steps / steps.min()
     return len(steps) > 2 and bool(np.abs(ratio - np.round(ratio)).max() < 1e-3)
+
+
+def _fast_drift(outcome: Outcome) -> Iterator[tuple[int, str, str]]:
+    """Charge drifts faster than charge leaves a particle in air, days to weeks (arXiv 2206.06848)."""
+    for index, place in outcome.place.items():
+        if outcome.reduced.model.drifting[index]:
+            per_hour = 3600.0 * float(outcome.adjusted.theta[place, DRIFT])
+            if abs(per_hour) > FASTEST_DRIFT:
+                text = (
+                    f"its charge drifts by {100.0 * per_hour:+.2g} % an hour, faster than charge leaves a particle in "
+                    "air: suspect evaporation, a drifting supply, an ioniser or ultraviolet light"
+                )
+                yield index, "charge_drift", text

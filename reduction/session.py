@@ -19,6 +19,7 @@ from reduction.sanity import notes_of
 from reduction.sessionfacts import facts
 from reduction.settings import Campaign
 from reduction.solution import Reduced, adjust_session, fit_session, without_diameter
+from reduction.strain import odd_one_out
 from reduction.tables import COLUMNS
 
 
@@ -67,13 +68,15 @@ def reduce_campaign(campaign: Campaign, logs: Mapping[str, Logs]) -> dict[str, S
         [solved[session].alone.theta[chosen[session]] for session in pooled],
     )
     adjusted = dict(zip(pooled, together, strict=True))
+    names = [[f"{session}/{solved[session].prepared.names[one]}" for one in chosen[session]] for session in pooled]
+    odd = odd_one_out(together, names)
     records = {}
     for session, reduced in solved.items():
         final, particles = adjusted.get(session), chosen[session]
         if final is None:
             final, particles = adjust_session(reduced, "particle")
         records[session] = record_of(
-            outcome_of(campaign, campaign.sessions[session], logs[session], reduced, final, particles)
+            outcome_of(campaign, campaign.sessions[session], logs[session], reduced, final, particles, odd)
         )
     return records
 
@@ -91,7 +94,7 @@ def record_of(outcome: Outcome) -> SessionRecord:
         outcome.reduced.flags[index].add(word)
     names, session, pooled = list(outcome.names), outcome.session.id, outcome.campaign.options.adjust == "campaign"
     components = budget.component_rows(outcome.results, session, names, pooled=pooled)
-    budgets = budget.budget_rows(outcome.results, session, names, outcome.reduced.scatter)
+    budgets = budget.budget_rows(outcome.results, session, names, outcome.reduced.scatter, pooled=pooled)
     tables = {
         "particles": list(particle_rows(outcome)),
         "methods": list(method_rows(outcome)),

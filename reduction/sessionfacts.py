@@ -136,8 +136,8 @@ def _strain(outcome: Outcome) -> dict[str, Any] | None:
         "chi_square": strain.chi_square,
         "degrees_of_freedom": strain.dof,
         "p": strain.p if strain.dof > 0 else None,
-        "strains_most": outcome.names[strain.strains_most] if strain.strains_most >= 0 else None,
-        "others_move_u": strain.others_move if np.isfinite(strain.others_move) else None,
+        "strains_most": strain.odd.name if strain.odd else None,
+        "others_move_u": strain.odd.others_move if strain.odd else None,
         "sentences": list(strain.sentences),
     }
 

@@ -54,6 +54,7 @@ class Reduced:
     starts: list[list[Start]]
     fits: dict[str, list[MethodFit]]
     scatter: dict[str, float]  # log: degrees of freedom of the u taken from its scatter
+    noise_dof: dict[str, float]  # the same, and of logs whose u was enlarged by their Birge ratios
     flags: list[set[str]]
     alone: Adjusted
     estimates: list[dict[str, MethodEstimate]]
@@ -95,9 +96,11 @@ def fit_session(prepared: Prepared, scatter_policy: str) -> Reduced:
     model = _possible(model, fits, starts, flags)
     alone, is_open, reasons = _alone(model, starts, theta, flags)
     alone = _without_impossible_secular(alone, fits, is_open, reasons, flags)
+    noise_dof = dict(scatter)
     if scatter_policy == "inflate":
         inflated = _inflated(alone, fits, scatter, flags)
         if inflated is not alone.model:
+            noise_dof |= _inflated_dof(alone, inflated, fits)
             alone = adjust_alone(inflated, alone.theta, near=True)
     dof = alone_dof(alone)
     for index in range(count):
@@ -111,12 +114,18 @@ def fit_session(prepared: Prepared, scatter_policy: str) -> Reduced:
     for slip in slips:
         flags[slip.particle].add("factor_suspected")
     estimates = _method_estimates(alone.model, fits)
-    return Reduced(prepared, alone.model, starts, fits, scatter, flags, alone, estimates, dof, is_open, reasons, slips)
+    return Reduced(
+        prepared, alone.model, starts, fits, scatter, noise_dof, flags, alone, estimates, dof, is_open, reasons, slips
+    )
 
 
 def without_diameter(reduced: Reduced) -> Reduced:
     """The same with the diameter method out of the adjustment, to be compared with it."""
-    alone = _with_shifts(adjust_alone(reduced.model.without("diameter"), reduced.alone.theta))
+    model = reduced.model.without("diameter")
+    if "height" in model.logs:  # shifts estimated with the diameter known must not stay
+        height = model.logs["height"]
+        model = replace(model, logs={**model.logs, "height": replace(height, reynolds=np.zeros(len(height)))})
+    alone = _with_shifts(adjust_alone(model, reduced.alone.theta))
     return replace(reduced, model=alone.model, alone=alone, dof=alone_dof(alone))
 
 
@@ -259,6 +268,16 @@ def _inflated(
     return replace(alone.model, logs=logs) if larger else alone.model
 
 
+def _inflated_dof(alone: Adjusted, inflated: Model, fits: Mapping[str, list[MethodFit]]) -> dict[str, float]:
+    """Median degrees of freedom of the Birge ratios that enlarged each log's u: those of the enlarged u."""
+    found = {}
+    for name, log in inflated.logs.items():
+        larger = np.unique(log.particle[np.asarray(log.u > alone.model.logs[name].u)])
+        if len(larger):
+            found[name] = float(np.median([fits[name][index].dof for index in larger.tolist()]))
+    return found
+
+
 def _left_out(fits: dict[str, list[MethodFit]], name: str, index: int, flags: list[set[str]]) -> None:
     """Say of one method that its readings ask for a motion the particle cannot have."""
     status = "no_oscillation" if name == "secular" else "unstable"
@@ -317,7 +336,10 @@ def _without_impossible_secular(
     asked = {"secular": model.subset(doubtful).logs["secular"]}
     readings = predict(part.setting, asked, rest.theta[None], part.sign, rest.xi[None])["secular"].reading[0]
     missing = np.bincount(asked["secular"].particle, ~np.isfinite(readings), len(doubtful)) > 0
-    gone = [int(index) for place, index in enumerate(doubtful) if missing[place] and rest.settled[place]]
+    sure = np.asarray(
+        is_determined(rest).all(axis=1)
+    )  # where the drag is open, a motion without oscillation proves nothing
+    gone = [int(index) for place, index in enumerate(doubtful) if missing[place] and sure[place]]
     if not gone:
         return alone
     theta_all, sign = alone.theta.copy(), model.sign.copy()

@@ -30,7 +30,8 @@ COLUMNS: dict[str, tuple[str, ...]] = {
             normalized_error""",
         "inputs": "input scope owner estimate u unit shape adjusted_estimate adjusted_u pull",
         "components": "session particle result input scope component unit",
-        "budget": "session particle result input estimate u shape evaluation sensitivity component share",
+        "budget": """session particle result input estimate u shape evaluation sensitivity component share scope
+            degrees_of_freedom""",
         "comparison": """group sessions particles mean u_mean low high unit between_sessions
             between_particles""",  # rank_1 ... follow, as many as there are groups
         "contrasts": "group_a group_b difference u_difference low high p p_holm unit",

@@ -21,7 +21,7 @@ from reduction.simulationplan import REGIMES
 
 P = 1e-4  # of a false alarm, were the seeds drawn anew
 MAIN = ("charge_to_mass_C_per_kg", "charge_e")
-CAMPAIGNS = 45
+CAMPAIGNS = 30
 COMPARED = 4  # campaigns of each regime that are reduced a second time, each particle alone
 
 
@@ -159,7 +159,7 @@ def test_intervals_from_the_scatter_of_few_readings_hold_by_students_t(tmp_path)
     habits = Habits(logs=("balance",), unstated=("balance_voltage_V",), balance_readings=3)
     stated = EXACT | {"reading": {**REGIMES["room_air_light"].reading, "balance_voltage_V": 10.0}}
     case = Case("few", "room_air_light", particles=1, options=QUICK, habits=habits, stated=stated)
-    t_is_needed(gathered(tmp_path, case, 150))
+    t_is_needed(gathered(tmp_path, case, 120))
 
 
 @pytest.mark.parametrize("regime", ["room_air_light", "low_pressure"])
@@ -178,9 +178,9 @@ def test_intervals_with_all_reading_uncertainties_from_scatter_hold(tmp_path, re
 
 def test_intervals_of_a_whole_campaign_adjusted_together_hold(tmp_path):
     case = Case("campaign", "room_air_light", sessions=3, particles=2, options={"adjust": "campaign"})
-    rows = gathered(tmp_path, case, 14)
+    rows = gathered(tmp_path, case, 12)
     all_determined(rows)
-    assert len(rows) == 14 * 6
+    assert len(rows) == 12 * 6
     for column in MAIN:
         holds_often_enough(rows, column)
         unit_normal(pulls(independent(rows), column))
@@ -188,7 +188,7 @@ def test_intervals_of_a_whole_campaign_adjusted_together_hold(tmp_path):
 
 
 def test_intervals_hold_where_inputs_are_rectangular_arcsine_triangular_or_t(tmp_path):
-    rows = gathered(tmp_path, Case("shapes", "room_air_light", particles=2, stated=SHAPES), 30)
+    rows = gathered(tmp_path, Case("shapes", "room_air_light", particles=2, stated=SHAPES), 25)
     all_determined(rows)
     one = independent(rows)
     for column in INTERVALS:
@@ -202,7 +202,7 @@ def test_intervals_hold_where_inputs_are_rectangular_arcsine_triangular_or_t(tmp
 def test_intervals_hold_where_a_stated_t_of_few_degrees_of_freedom_dominates(tmp_path):
     stated = EXACT | {"dc_field_per_volt_per_m": "{value: 61.3, u: 0.9, dof: 2}"}
     case = Case("t", "room_air_light", particles=1, options=QUICK, habits=Habits(logs=("balance",)), stated=stated)
-    t_is_needed(gathered(tmp_path, case, 150))
+    t_is_needed(gathered(tmp_path, case, 120))
 
 
 def test_inflating_mends_understated_uncertainties(tmp_path):

@@ -107,7 +107,7 @@ def test_own_diameter_before_the_lots(tmp_path):
     log = found.logs["diameter"]
     assert log.lot.tolist() == [False, True]
     np.testing.assert_allclose(log.observed, [21.2e-6, 0.0])
-    np.testing.assert_allclose(log.u, [0.3e-6, 0.4e-6])  # of the reading, and the lot's spread
+    np.testing.assert_allclose(log.u, [0.3e-6, 0.4 / 20.3])  # of the reading, and the lot's spread in the logarithm
 
 
 def test_a_lot_unused_leaves_only_own_diameters(tmp_path):

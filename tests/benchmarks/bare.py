@@ -376,7 +376,8 @@ class Logged:
             out.append((origin + mean * factor * (1 + k["reynolds"] * shift)) / k["gain_height"])
             slope = s * k["D"] * k["gain_dc_voltage"] * response * factor / k["gain_height"]
         if len(self.data) > len(self.balance) + len(self.height) + len(self.secular):
-            out.append([d / (k["gain_diameter"] if self.own.get("diameter_um") else 1.0)])
+            lot = self.data[-1]  # sizes of a lot are spread in the logarithm
+            out.append([d / k["gain_diameter"] if self.own.get("diameter_um") else lot * (1 + np.log(d / lot))])
         return np.concatenate(out), slope
 
     def sigma(self, theta):
