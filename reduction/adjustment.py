@@ -8,8 +8,8 @@ equations are renewed at the adjusted values until settled.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -39,8 +39,9 @@ ROUNDS = 60
 SETTLED = 1e-6  # of u: settled when the next step promises to lower chi-square by less than its square
 LONGEST = 1.0  # longest step in a logarithm
 FLAT = 1e-3  # a valley along which chi-square would fall by less than the square of this is not walked to its end
-SETTLED_TOGETHER = 3e-4  # the same for a group, where rounding of thousands of readings adds up
+SETTLED_TOGETHER = 1e-4  # the same for a group, times the root of its particles, over which rounding adds up
 FARTHEST = 4.0  # longest step of a shared input, in its u, while a particle is adjusted alone
+BLOCK = 48  # particles linearised at a time, so that what is needed stays in the cache
 CLOSE = 30.0  # root of the fall in chi-square promised, below which successive steps are compared
 FARTHEST_TOGETHER = 40.0  # the same for a group
 
@@ -163,12 +164,23 @@ class Adjusted:
 
 
 def _evaluate(model: Model, theta: Array, xi: Array) -> tuple[dict[str, Linearised], dict[str, Normal]]:
-    lines = linearise(model.setting, model.logs, theta, model.sign, xi)
-    lines_of = {name: _finite(line) for name, line in lines.items()}
+    lines = _lines(model, theta, xi)
+    return lines, _normals(model, lines)
+
+
+def _lines(model: Model, theta: Array, xi: Array) -> dict[str, Linearised]:
+    return {name: _finite(line) for name, line in linearise(model.setting, model.logs, theta, model.sign, xi).items()}
+
+
+def _normals(model: Model, lines: Mapping[str, Linearised]) -> dict[str, Normal]:
     active = model.active
-    return lines_of, {
-        name: normal_equations(model.logs[name], line, model.particles, active) for name, line in lines_of.items()
-    }
+    return {name: normal_equations(model.logs[name], line, model.particles, active) for name, line in lines.items()}
+
+
+def _joined(lines: Sequence[Linearised]) -> Linearised:
+    """Lines of blocks of particles, one after another."""
+    names = Linearised.__dataclass_fields__
+    return Linearised(**{name: np.concatenate([getattr(line, name) for line in lines]) for name in names})
 
 
 def _finite(line: Linearised) -> Linearised:
@@ -368,9 +380,28 @@ class _Member:
     columns: Indices  # place of the session's inputs among the group's
     lines: Mapping[str, Linearised]
     normals: Mapping[str, Normal]
+    blocks: list[Model] = field(init=False)
+
+    def __post_init__(self) -> None:
+        count = self.model.particles
+        starts = range(0, count, BLOCK) if count > BLOCK else ()
+        self.blocks = [self.model.subset(np.arange(one, min(one + BLOCK, count), dtype=np.intp)) for one in starts]
 
     def renew(self, xi: Array) -> None:
-        self.lines, self.normals = _evaluate(self.model, self.theta, xi[None, self.columns])
+        own = xi[None, self.columns]
+        if not self.blocks:
+            self.lines, self.normals = _evaluate(self.model, self.theta, own)
+            return
+        found = [
+            _lines(block, self.theta[place * BLOCK : place * BLOCK + block.particles], own)
+            for place, block in enumerate(self.blocks)
+        ]
+        self.lines = {
+            name: _joined([lines[name] for lines in found if name in lines])
+            for name in self.model.logs
+            if len(self.model.logs[name])
+        }
+        self.normals = _normals(self.model, self.lines)
 
     def cost(self) -> float:
         return float(_line_cost(self.model, self.theta, self.lines).sum())
@@ -408,6 +439,7 @@ def adjust_together(models: list[Model], starts: list[Array]) -> list[Adjusted]:
         members.append(member)
     damping, settled = 1e-6, False
     stretch, last = 1.0, None
+    enough = SETTLED_TOGETHER * np.sqrt(max(sum(model.particles for model in models), 9))
     for _ in range(ROUNDS):
         cost = sum(one.cost() for one in members) + float(xi @ xi)
         parts, move, size = _group_step(members, xi, damping)
@@ -425,13 +457,13 @@ def adjust_together(models: list[Model], starts: list[Array]) -> list[Adjusted]:
             ) + float(((xi + factor * move) ** 2).sum())
             if trial <= cost * (1.0 + 1e-12) + 1e-9 or factor < 1e-9:
                 break
-            factor *= 0.25
+            factor *= 0.5
         if factor >= 1e-9:
             xi = xi + factor * move
             for one, step in zip(members, steps, strict=True):
                 one.theta = one.theta + factor * step
                 one.renew(xi)
-        if size < SETTLED_TOGETHER or factor < 1e-9:
+        if size < enough or factor < 1e-9:
             settled = factor >= 1e-9 or size < 1e-3
             break
     return _finished(members, xi, group, settled)
@@ -454,7 +486,7 @@ def _stretch(move: Array, last: Array) -> float:
     Gauss-Newton leaves the curvature of the equations out, which makes its steps too long or too short by one ratio.
     """
     ratio = float(move @ last) / max(float(last @ last), 1e-300)
-    return 1.0 / (1.0 - ratio) if abs(ratio) < 0.4 else 1.0
+    return 1.0 / (1.0 - ratio) if abs(ratio) < 0.75 else 1.0
 
 
 def _group_step(members: list[_Member], xi: Array, damping: float) -> tuple[list[tuple[Array, Array]], Array, float]:

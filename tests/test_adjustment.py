@@ -8,6 +8,7 @@ import numpy as np
 import pytest
 from scipy.optimize import least_squares
 
+from reduction import adjustment
 from reduction.adjustment import Adjusted, Model, adjust_alone, adjust_together
 from reduction.budget import RESULTS, component_rows, results_of
 from reduction.errors import Faults
@@ -255,3 +256,16 @@ def test_residuals_use_the_uncertainty_of_the_dc_voltage_along_the_slope(reduced
     expected = np.sqrt(log.u**2 + (prediction.slope * log.u_voltage) ** 2)
     assert effective_u(log, prediction) == pytest.approx(expected, rel=1e-12)
     assert np.all(expected > log.u)
+
+
+def test_many_particles_go_through_in_blocks_with_the_same_result(tmp_path, monkeypatch):
+    simulate_campaign(tmp_path / "campaign", plan=Plan(sessions=1, particles=5), seed=4)
+    reduced = solved(tmp_path / "campaign", "s001")
+    whole = adjust_together([reduced.alone.model], [reduced.alone.theta])[0]
+    monkeypatch.setattr(adjustment, "BLOCK", 2)
+    blocked = adjust_together([reduced.alone.model], [reduced.alone.theta])[0]
+    u = np.sqrt(np.einsum("nii->ni", whole.covariance))
+    assert np.abs((blocked.theta - whole.theta) / u).max() < 1e-9
+    assert blocked.covariance / (u[:, :, None] * u[:, None, :]) == pytest.approx(
+        whole.covariance / (u[:, :, None] * u[:, None, :]), abs=1e-9
+    )

@@ -3,8 +3,9 @@
     python tests/benchmarks/adjustment.py [SESSIONS [PARTICLES]]
 
 With the package installed, or PYTHONPATH naming the checkout; a minute. The particles are simulated (invented), each
-with balance and height logs; the adjustment starts, as in a run, from each particle adjusted alone. Prints what it took and where it went: how often the Jacobian was renewed, its share of the time, and how
-many evaluations of the readings one renewal costs, a ratio within one run. Aim: below 10 s and 1 GB as it stands.
+with balance and height logs; the adjustment starts, as in a run, from each particle adjusted alone. Prints what it took
+and where it went: how often the Jacobian was renewed, its share of the time, and how many evaluations of the readings
+one renewal costs, a ratio within one run. Aim: below 10 s and 1 GB.
 """
 
 from __future__ import annotations
@@ -62,7 +63,7 @@ def main(sessions: int, particles: int) -> None:
     settled = all(one.settled.all() for one in adjusted)
     print(f"{sessions * particles} particles, {shared} shared inputs: {spent:.1f} s of core time, settled {settled}")
     print(f"memory: {before:.0f} MB before, {peak:.0f} MB at most")
-    print(f"Jacobians: {clock.calls / sessions:.0f} a session, {100 * clock.spent / spent:.0f} % of the time")
+    print(f"Jacobians of blocks of particles: {clock.calls / sessions:.0f} a session, {100 * clock.spent / spent:.0f} % of the time")
     pull = max(float(np.abs(one.xi).max()) for one in adjusted)
     print(f"largest move of an input from its estimate: {pull:.1f} u")
     model, theta, xi = models[0], starts[0], np.zeros((1, len(models[0].setting.uncertain)))
