@@ -63,7 +63,7 @@ def main(sessions: int, particles: int) -> None:
     settled = all(one.settled.all() for one in adjusted)
     print(f"{sessions * particles} particles, {shared} shared inputs: {spent:.1f} s of core time, settled {settled}")
     print(f"memory: {before:.0f} MB before, {peak:.0f} MB at most")
-    print(f"Jacobians of blocks of particles: {clock.calls / sessions:.0f} a session, {100 * clock.spent / spent:.0f} % of the time")
+    print(f"Jacobians of blocks: {clock.calls / sessions:.0f} a session, {100 * clock.spent / spent:.0f} % of the time")
     pull = max(float(np.abs(one.xi).max()) for one in adjusted)
     print(f"largest move of an input from its estimate: {pull:.1f} u")
     model, theta, xi = models[0], starts[0], np.zeros((1, len(models[0].setting.uncertain)))
