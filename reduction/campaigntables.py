@@ -184,10 +184,17 @@ def _exact_words(name: str) -> str:
     return name.replace("/", ", ").replace("_", " ")
 
 
+def _setting(value: object) -> str:
+    """One setting as a reader writes it: words as they are, a mapping as name: value."""
+    if isinstance(value, dict):
+        return ", ".join(f"{name}: {_setting(one)}" for name, one in sorted(value.items()))
+    return value if isinstance(value, str) else json.dumps(value, ensure_ascii=False)
+
+
 def settings_table(settings: Row) -> Sheet:
     """Settings of the campaign that change numbers."""
     shown = {key: value for key, value in sorted(settings.items()) if key != "title"}
-    texts = [v if isinstance(v, str) else json.dumps(v, ensure_ascii=False, sort_keys=True) for v in shown.values()]
+    texts = [_setting(value) for value in shown.values()]
     return sheet(["Setting", "Value"], [[foreign(k.replace("_", " ")) for k in shown], [foreign(t) for t in texts]],
                  "ll", [1, 2])  # fmt: skip
 
