@@ -14,7 +14,6 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 
 import numpy as np
-from scipy import stats
 
 from reduction.adjustment import Adjusted
 from reduction.methods import (
@@ -28,6 +27,7 @@ from reduction.methods import (
     particle_properties,
     surroundings,
 )
+from reduction.propagation import coverage_factor, welch_satterthwaite
 
 RESULTS = ("charge_to_mass", "drag_rate", "diameter", "mass", "charge", "surface_charge_density")
 UNITS = {
@@ -197,18 +197,15 @@ def effective_dof(results: Results, log_dof: Mapping[str, float]) -> Array:
     nu = u^4 / sum(u_k^4 / nu_k); what rests on one variance estimate (the noise of a log with u from scatter, over all
     particles) is summed before the fourth power. GUM G.4.
     """
-    weighed = np.zeros_like(results.variance)
-    for name, variance in results.log_total.items():
-        weighed += variance**2 / log_dof.get(name, np.inf)
-    for index, one in enumerate(results.adjusted.group):
-        weighed += results.by_input[:, :, index] ** 4 / one.quantity.dof
-    with np.errstate(divide="ignore"):
-        return np.where(weighed > 0.0, results.variance**2 / np.where(weighed > 0.0, weighed, 1.0), np.inf)
+    logs = list(results.log_total)
+    noise = [np.sqrt(np.clip(results.log_total[name], 0.0, None))[:, :, None] for name in logs]
+    dofs = [log_dof.get(name, np.inf) for name in logs] + [one.quantity.dof for one in results.adjusted.group]
+    return welch_satterthwaite(np.concatenate([*noise, results.by_input], axis=2), dofs, results.variance)
 
 
 def interval(results: Results, dof: Array, coverage: float) -> tuple[Array, Array]:
     """Coverage interval of each result, (N, 6) each: value exp(+-t u) by Student's t, low below high."""
-    factor = stats.t.ppf(0.5 + coverage / 2.0, np.clip(dof, 1.0, 1e9))
+    factor = coverage_factor(np.maximum(dof, 1.0), coverage)
     spread = np.minimum(factor * np.sqrt(results.variance), 300.0)  # of what is not determined, and not reported
     ends = results.value * np.exp(-spread), results.value * np.exp(spread)
     return np.minimum(*ends), np.maximum(*ends)

@@ -2,17 +2,16 @@
 
 components.csv is a square root of the covariance of all results. Each name in it becomes one independent variable of
 unit standard deviation, so means, ratios and differences of results carry every correlation, within a session and
-between sessions.
+between sessions. `propagation.covariance` gives the covariance matrix of any of them.
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable
 from pathlib import Path
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 from uncertainties import UFloat, ufloat
 
 from reduction.tables import read_table
@@ -68,14 +67,3 @@ def _combined(parts: Iterable[tuple[str, float]], variables: dict[str, UFloat]) 
             variables[name] = ufloat(0.0, 1.0, tag=name)
         total = total + component * variables[name]
     return total
-
-
-def covariance(numbers: Iterable[UFloat]) -> NDArray[np.float64]:
-    """Covariance matrix of uncertain numbers, J J' with J their derivatives times the variables' u, shape (n, n)."""
-    derivatives: list[Mapping[Any, float]] = [number.derivatives for number in numbers]
-    place = {variable: index for index, variable in enumerate({one: None for row in derivatives for one in row})}
-    jacobian = np.zeros((len(derivatives), len(place)))
-    for row, own in enumerate(derivatives):
-        for variable, slope in own.items():
-            jacobian[row, place[variable]] = slope * variable.std_dev
-    return jacobian @ jacobian.T

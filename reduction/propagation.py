@@ -3,11 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy import stats
-from uncertainties.core import AffineScalarFunc
+
+if TYPE_CHECKING:
+    from uncertainties.core import AffineScalarFunc
 
 Array = NDArray[np.float64]
 
@@ -39,21 +42,23 @@ def combined(components: ArrayLike, correlation: ArrayLike | None = None) -> flo
     return float(np.sqrt(u @ np.asarray(correlation, dtype=np.float64) @ u))
 
 
-def welch_satterthwaite(components: ArrayLike, dofs: ArrayLike) -> float:
-    """Effective degrees of freedom of a combined standard uncertainty.
+def welch_satterthwaite(components: ArrayLike, dofs: ArrayLike, variance: ArrayLike | None = None) -> Array:
+    """Effective degrees of freedom of combined standard uncertainties.
 
     nu = u_c^4 / sum(u_i^4 / nu_i)
 
     Parameters
     ----------
-    components : array_like, shape (n,)
+    components : array_like, shape (..., n)
         Components of independent inputs; those that rest on one variance estimate are to be summed beforehand.
     dofs : array_like, shape (n,)
         Degrees of freedom of each [1], inf where its u is taken as known.
+    variance : array_like, shape (...), optional
+        u_c^2, where it holds more than the components given, all of known u; their sum of squares if left out.
 
     Returns
     -------
-    float
+    ndarray, shape (...)
         Effective degrees of freedom [1], inf where no component has finite ones.
 
     Notes
@@ -61,23 +66,25 @@ def welch_satterthwaite(components: ArrayLike, dofs: ArrayLike) -> float:
     JCGM 100:2008, equation G.2b.
     """
     u = np.asarray(components, dtype=np.float64)
-    weighed = float((u**4 / np.asarray(dofs, dtype=np.float64)).sum())
-    return float((u @ u) ** 2 / weighed) if weighed > 0.0 else float("inf")
+    total = (u**2).sum(axis=-1) if variance is None else np.asarray(variance, dtype=np.float64)
+    weighed = (u**4 / np.asarray(dofs, dtype=np.float64)).sum(axis=-1)
+    known = weighed > 0.0
+    return np.asarray(np.where(known, total**2 / np.where(known, weighed, 1.0), np.inf))
 
 
-def coverage_factor(dof: float, coverage: float) -> float:
+def coverage_factor(dof: ArrayLike, coverage: float) -> Array:
     """Factor from a standard to an expanded uncertainty, by Student's t.
 
     Parameters
     ----------
-    dof : float
+    dof : array_like
         Effective degrees of freedom [1]; the GUM truncates them to an integer where tables are used.
     coverage : float
         Coverage probability [1].
 
     Returns
     -------
-    float
+    ndarray
         Coverage factor k [1].
 
     Notes
@@ -85,7 +92,8 @@ def coverage_factor(dof: float, coverage: float) -> float:
     JCGM 100:2008, G.3.
     """
     tail = 0.5 + coverage / 2.0
-    return float(stats.t.ppf(tail, dof) if np.isfinite(dof) else stats.norm.ppf(tail))
+    nu = np.asarray(dof, dtype=np.float64)
+    return np.asarray(np.where(np.isfinite(nu), stats.t.ppf(tail, np.minimum(nu, 1e9)), stats.norm.ppf(tail)))
 
 
 def covariance(quantities: Sequence[AffineScalarFunc]) -> Array:

@@ -7,9 +7,10 @@ import pandas as pd
 import pytest
 from uncertainties import covariance_matrix, ufloat
 
-from reduction.correlated import covariance, read_results
+from reduction.correlated import read_results
 from reduction.errors import Faults
 from reduction.logs import read_logs
+from reduction.propagation import covariance
 from reduction.session import reduce_session
 from reduction.settings import load_campaign
 from reduction.simulation import simulate_campaign

@@ -19,8 +19,8 @@ errors places wholefile units flags
 textfile contract yamlfile quantity entries logged sessionfile csvfile heads wording
 air gravity drag recurrence floquet secular resonance motion
 settings schemas logs check newcampaign
-inputs methods fits adjustment charge starts budget agreement preparation slips solution strain
-shapes noise propagation montecarlo outcome window sanity refits validation
+inputs methods fits adjustment charge starts propagation budget agreement preparation slips solution strain
+shapes noise montecarlo outcome window sanity refits validation
 tables correlated multiplicity randomeffects sessionmeans groupmeans pairs ranks transitivity trends comparison
 unseen intrinsic histogram planning comparisonwords groupbudget comparisontables
 records resultrows readingrows curves sessionfacts session

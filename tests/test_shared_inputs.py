@@ -13,10 +13,11 @@ from reduction import simulationtruth
 from reduction.adjustment import adjust_alone, adjust_together
 from reduction.budget import RESULTS, result_logarithms, results_of
 from reduction.check import check_campaign
-from reduction.correlated import covariance, read_results
+from reduction.correlated import read_results
 from reduction.drag import drag_rate
 from reduction.methods import predict, surroundings
 from reduction.preparation import prepare
+from reduction.propagation import covariance
 from reduction.session import reduce_campaign, reduce_session
 from reduction.simulation import Habits, simulate_campaign
 from reduction.simulationplan import REGIMES, Plan
