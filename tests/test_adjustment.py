@@ -274,7 +274,7 @@ def test_many_particles_go_through_in_blocks_with_the_same_result(tmp_path, monk
 
 
 def test_many_particles_do_not_pull_the_sizes_of_their_lot_together(tmp_path):
-    # deviations from the lot's mean, as plain differences, shrink with the size itself: a mean pull near 2 came of that.
+    # deviations from the mean of the lot, as differences, shrink with the size itself: a mean pull near 2 came of it.
     # Some 0.6 remains here from adjusting at the mode; what the particles share scatters by 1 over the campaigns.
     pulls = []
     for seed in range(12):
