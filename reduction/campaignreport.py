@@ -158,9 +158,10 @@ def _trust(particles: Sequence[Row], agreement: Sequence[Row], inputs: Sequence[
         words.append("No particle was measured by two methods that give the same quantity: nothing checks the result.")
     poor = [p for p in particles if "chi_square" in p["flags"].split(";")]
     if poor:
+        tested = sum(p["degrees_of_freedom"] > 0 for p in particles)
         words.append(
-            f"{counted(len(poor), 'particle scatters', 'particles scatter')} more than stated (chi-square, p < 0.01): "
-            "take the stated u as too small."
+            f"{counted(len(poor), 'particle scatters', 'particles scatter')} more than stated (chi-square, p < 0.01); "
+            f"of {tested} tested, chance alone gives about {significant(0.01 * tested, 1)}."
         )
     strained = sorted(
         {i["input"] for i in inputs if i["u"] > 0 and abs(i["adjusted_estimate"] - i["estimate"]) > _MOVED * i["u"]}
