@@ -437,12 +437,12 @@ def adjust_together(models: list[Model], starts: list[Array]) -> list[Adjusted]:
         member = _Member(model, start.copy(), np.array([place[name] for name in names], np.intp), {}, {})
         member.renew(xi)
         members.append(member)
-    damping, settled = 1e-6, False
+    settled = False
     stretch, last = 1.0, None
     enough = SETTLED_TOGETHER * np.sqrt(max(sum(model.particles for model in models), 9))
     for _ in range(ROUNDS):
         cost = sum(one.cost() for one in members) + float(xi @ xi)
-        parts, move, size = _group_step(members, xi, damping)
+        parts, move, size = _group_step(members, xi)
         if stretch == 1.0 and last is not None and size < CLOSE:
             stretch = _stretch(move, last)
         last = move
@@ -489,9 +489,9 @@ def _stretch(move: Array, last: Array) -> float:
     return 1.0 / (1.0 - ratio) if abs(ratio) < 0.75 else 1.0
 
 
-def _group_step(members: list[_Member], xi: Array, damping: float) -> tuple[list[tuple[Array, Array]], Array, float]:
+def _group_step(members: list[_Member], xi: Array) -> tuple[list[tuple[Array, Array]], Array, float]:
     """Gauss-Newton steps: of each session its own and its response, of the inputs; root of the fall in chi-square."""
-    square, right = np.eye(len(xi)) * (1.0 + damping), -xi
+    square, right = np.eye(len(xi)), -xi
     parts = [_reduced(one) for one in members]
     for one, part in zip(members, parts, strict=True):
         square[np.ix_(one.columns, one.columns)] += part[3]

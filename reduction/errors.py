@@ -61,14 +61,6 @@ class InputError(ReductionError, ValueError):
         super().__init__("\n".join(str(fault) for fault in self.faults))
 
 
-class ValidityError(ReductionError, ValueError):
-    """A formula was asked for a value outside the range it holds in."""
-
-
-class FitError(ReductionError, RuntimeError):
-    """A fit could not be carried out."""
-
-
 class ResultsError(ReductionError, RuntimeError):
     """A results folder cannot be used as asked."""
 

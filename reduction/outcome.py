@@ -91,7 +91,9 @@ def outcome_of(
         low[:, result] = np.where(known, drawn.low[:, result], low[:, result])
         high[:, result] = np.where(known, drawn.high[:, result], high[:, result])
     sure = is_determined(adjusted)
-    drag_alone = adjust_alone(reduced.alone.model.without("diameter"), reduced.alone.theta, near=True)
+    drag_alone = reduced.alone
+    if "diameter" in drag_alone.model.logs:
+        drag_alone = adjust_alone(drag_alone.model.without("diameter"), drag_alone.theta, near=True)
     _flag_sizes_from_lot(reduced, drag_alone)
     return Outcome(
         campaign,

@@ -88,11 +88,6 @@ def dc_reading(setting: Setting, true: Array) -> Array:
     return np.asarray((setting.polarity * true - setting.offset) / setting.gain["dc_voltage"])
 
 
-def true_dc(setting: Setting, reading: Array) -> Array:
-    """DC voltage [V], true, of a reading, polarity (gain reading + offset)."""
-    return np.asarray(setting.polarity * (setting.gain["dc_voltage"] * reading + setting.offset))
-
-
 def true_height(setting: Setting, particles: Particles, index: Index, state: Driven, charge: Array, voltage: Array,
                 height_reading: str) -> Array:  # fmt: skip
     """Height shown at a true dc voltage, before gain and noise.

@@ -51,7 +51,6 @@ class Reduced:
 
     prepared: Prepared
     model: Model
-    starts: list[list[Start]]
     fits: dict[str, list[MethodFit]]
     scatter: dict[str, float]  # log: degrees of freedom of the u taken from its scatter
     noise_dof: dict[str, float]  # the same, and of logs whose u was enlarged by their Birge ratios
@@ -115,7 +114,7 @@ def fit_session(prepared: Prepared, scatter_policy: str) -> Reduced:
         flags[slip.particle].add("factor_suspected")
     estimates = _method_estimates(alone.model, fits)
     return Reduced(
-        prepared, alone.model, starts, fits, scatter, noise_dof, flags, alone, estimates, dof, is_open, reasons, slips
+        prepared, alone.model, fits, scatter, noise_dof, flags, alone, estimates, dof, is_open, reasons, slips
     )
 
 
