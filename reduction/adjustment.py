@@ -8,128 +8,35 @@ equations are renewed at the adjusted values until settled.
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from collections.abc import Mapping
+from dataclasses import dataclass, field
 
 import numpy as np
 
 from reduction.inputs import Input
-from reduction.methods import (
-    DRIFT,
-    LN_GAMMA,
-    LN_S,
-    ORIGIN,
-    PRIVATE,
-    SHAPE,
-    SINGULAR,
-    Array,
-    Flags,
-    Indices,
-    Linearised,
-    Readings,
-    Setting,
-    effective_u,
-    linearise,
-    predict,
+from reduction.lotvolume import of_the_lot, volume_gradient
+from reduction.methods import SHAPE, SINGULAR, Array, Flags, Indices, Linearised
+from reduction.normalequations import (
+    Model,
+    Normal,
+    assemble,
+    data_cost,
+    evaluate,
+    inverse_of,
+    line_cost,
 )
+from reduction.reducedequations import Member, shortened
 
-RIDGE = 1e-8  # information added to ln s and ln gamma: u of what is open stays finite (1e4) and is reported as open
-SINGULAR_SQUARE = 1e-14  # least eigenvalue of a scaled normal matrix that is inverted
 ROUNDS = 60
 SETTLED = 1e-6  # of u: settled when the next step promises to lower chi-square by less than its square
-LONGEST = 1.0  # longest step in a logarithm
 FLAT = 1e-3  # a valley along which chi-square would fall by less than the square of this is not walked to its end
 SETTLED_TOGETHER = 1e-4  # the same for a group, times the root of its particles, over which rounding adds up
-FARTHEST = 4.0  # longest step of a shared input, in its u, while a particle is adjusted alone
-BLOCK = 48  # particles linearised at a time, so that what is needed stays in the cache
-CLOSE = 30.0  # root of the fall in chi-square promised, below which successive steps are compared
-FARTHEST_TOGETHER = 40.0  # the same for a group
-
-
-@dataclass(frozen=True)
-class Model:
-    """Readings of one session, ready to be adjusted."""
-
-    setting: Setting
-    logs: Mapping[str, Readings]
-    sign: Array  # (N,)
-    drifting: Flags  # (N,)
-
-    @property
-    def particles(self) -> int:
-        """Number of particles."""
-        return len(self.sign)
-
-    @property
-    def active(self) -> Flags:
-        """Which private unknowns of each particle are free, (N, 5)."""
-        free = np.zeros((self.particles, len(PRIVATE)), bool)
-        free[:, LN_S] = free[:, LN_GAMMA] = True
-        height = self.logs.get("height")
-        if height is not None:
-            free[np.unique(height.particle), ORIGIN] = True
-        free[:, DRIFT] = self.drifting
-        free[:, SHAPE] = (self.setting.shape_spread > 0.0) & self.setting.has_density
-        return free
-
-    def subset(self, indices: Indices) -> Model:
-        """Only the given particles, renumbered in the order given."""
-        place = np.full(self.particles, -1)
-        place[indices] = np.arange(len(indices))
-        logs = {}
-        for name, log in self.logs.items():
-            kept = log.select(np.asarray(place[log.particle] >= 0))
-            renumbered = replace(kept, particle=place[kept.particle])
-            logs[name] = renumbered.select(np.argsort(renumbered.particle, kind="stable"))
-        setting = replace(
-            self.setting,
-            species=tuple(self.setting.species[one] for one in indices),
-            shape_spread=self.setting.shape_spread[indices],
-            has_density=self.setting.has_density[indices],
-        )
-        return Model(setting, logs, self.sign[indices], self.drifting[indices])
-
-    def without(self, method: str) -> Model:
-        """The same without one method."""
-        return replace(self, logs={name: log for name, log in self.logs.items() if name != method})
-
-
-@dataclass(frozen=True)
-class Normal:
-    """Normal equations of one log by particle: A (N, 5, 5), B (N, 5, K), C (N, K, K), g (N, 5), f (N, K)."""
-
-    private: Array
-    cross: Array
-    shared: Array
-    gradient: Array
-    shared_gradient: Array
-    chi_square: Array
-    readings: Indices
-
-
-def normal_equations(log: Readings, line: Linearised, particles: int, active: Flags) -> Normal:
-    """J'WJ, J'Wr and the cross terms with the shared inputs, summed over each particle's readings."""
-    jacobian = np.concatenate([line.private * active[log.particle], line.shared], axis=1)
-    width = jacobian.shape[1]
-    square, gradient = np.zeros((particles, width, width)), np.zeros((particles, width))
-    chi_square, readings = np.zeros(particles), np.zeros(particles, np.intp)
-    bounds = np.searchsorted(log.particle, np.arange(particles + 1)).tolist()
-    residuals = np.nan_to_num(line.residual)  # a missing one has no slope either
-    for one in range(particles):
-        part = slice(bounds[one], bounds[one + 1])
-        rows, residual = jacobian[part], residuals[part]
-        square[one], gradient[one] = rows.T @ rows, rows.T @ residual
-        chi_square[one], readings[one] = residual @ residual, len(residual)
-    count = active.shape[1]
-    return Normal(
-        square[:, :count, :count],
-        square[:, :count, count:],
-        square[:, count:, count:],
-        gradient[:, :count],
-        gradient[:, count:],
-        chi_square,
-        readings,
-    )
+NEAR = 1.0  # where the last steps begin, the same measure
+SLACK = 10.0  # by how many times what it promises to lower chi-square, and 1, a last step may raise it
+VOLUME_SETTLED = 0.02  # below which the volume term is not taken anew
+DEPTH = 3  # steps that are mixed
+FEW = 48  # particles of a session that stand for four times as many or more to begin with
+FARTHEST_TOGETHER = 40.0  # longest step of a shared input, in its u
 
 
 @dataclass(frozen=True)
@@ -163,86 +70,6 @@ class Adjusted:
         return spread
 
 
-def _evaluate(model: Model, theta: Array, xi: Array) -> tuple[dict[str, Linearised], dict[str, Normal]]:
-    lines = _lines(model, theta, xi)
-    return lines, _normals(model, lines)
-
-
-def _lines(model: Model, theta: Array, xi: Array) -> dict[str, Linearised]:
-    return {name: _finite(line) for name, line in linearise(model.setting, model.logs, theta, model.sign, xi).items()}
-
-
-def _normals(model: Model, lines: Mapping[str, Linearised]) -> dict[str, Normal]:
-    active = model.active
-    return {name: normal_equations(model.logs[name], line, model.particles, active) for name, line in lines.items()}
-
-
-def _joined(lines: Sequence[Linearised]) -> Linearised:
-    """Lines of blocks of particles, one after another."""
-    names = Linearised.__dataclass_fields__
-    return Linearised(**{name: np.concatenate([getattr(line, name) for line in lines]) for name in names})
-
-
-def _finite(line: Linearised) -> Linearised:
-    """A reading with no slope at the edge of a branch constrains nothing this round; its residual still counts."""
-    edge = np.asarray(~(np.isfinite(line.private).all(axis=1) & np.isfinite(line.shared).all(axis=1)))
-    if not edge.any():
-        return line
-    return replace(
-        line, private=np.where(edge[:, None], 0.0, line.private), shared=np.where(edge[:, None], 0.0, line.shared)
-    )
-
-
-def _line_cost(model: Model, theta: Array, lines: Mapping[str, Linearised]) -> Array:
-    """Chi-square of the readings by particle at the point of linearisation; infinite where the motion gives nothing."""
-    cost = np.zeros(model.particles)
-    for name, line in lines.items():
-        square = np.where(np.isfinite(line.residual), line.residual, np.inf) ** 2
-        cost += np.bincount(model.logs[name].particle, square, model.particles)
-    return cost + theta[:, SHAPE] ** 2
-
-
-def _data_cost(model: Model, theta: Array, xi: Array) -> Array:
-    """Chi-square of the readings by particle, u with the dc voltage's part; infinite where the motion gives nothing."""
-    cost = np.zeros(model.particles)
-    for name, prediction in predict(model.setting, model.logs, theta[None], model.sign, xi[None]).items():
-        log = model.logs[name]
-        residual = (log.observed - prediction.reading[0]) / effective_u(log, prediction)
-        square = np.where(np.isfinite(residual), residual, np.inf) ** 2
-        cost += np.bincount(log.particle, square, model.particles)
-    return cost + theta[:, SHAPE] ** 2
-
-
-def _assemble(model: Model, theta: Array, normals: Mapping[str, Normal]) -> tuple[Array, Array, Array, Array, Array]:
-    """Sum of the methods' normal equations, with the priors of the private unknowns."""
-    width = len(model.setting.uncertain)
-    count = model.particles
-    private, cross = np.zeros((count, 5, 5)), np.zeros((count, 5, width))
-    shared, gradient, shared_gradient = np.zeros((count, width, width)), np.zeros((count, 5)), np.zeros((count, width))
-    for normal in normals.values():
-        private += normal.private
-        cross += normal.cross
-        shared += normal.shared
-        gradient += normal.gradient
-        shared_gradient += normal.shared_gradient
-    active = model.active
-    diagonal = np.where(active, 0.0, 1.0)
-    diagonal[:, LN_S] += RIDGE
-    diagonal[:, LN_GAMMA] += RIDGE
-    diagonal[:, SHAPE] += np.where(active[:, SHAPE], 1.0, 0.0)
-    gradient[:, SHAPE] -= np.where(active[:, SHAPE], theta[:, SHAPE], 0.0)
-    private[:, np.arange(5), np.arange(5)] += diagonal
-    return private, cross, shared, gradient, shared_gradient
-
-
-def _shortened(step: Array) -> Array:
-    """Factor that keeps the longest step in ln s, ln gamma and, behind the private ones, xi in bounds, by particle."""
-    longest = np.abs(step[:, [LN_S, LN_GAMMA]]).max(axis=1)
-    longest = np.maximum(longest, np.abs(step[:, 5:]).max(axis=1, initial=0.0) * LONGEST / FARTHEST)
-    factor: Array = np.minimum(1.0, LONGEST / np.maximum(longest, 1e-300))
-    return factor
-
-
 def _damped(square: Array, damping: Array) -> Array:
     """Square matrices with their diagonals raised by the damping, by particle."""
     raised = square.copy()
@@ -271,25 +98,25 @@ def adjust_alone(model: Model, theta: Array, *, near: bool = False) -> Adjusted:
     count, width = model.particles, len(model.setting.uncertain)
     theta, xi = theta.copy(), np.zeros((count, width))
     damping, settled = np.full(count, 1e-10 if near else 1e-3), np.zeros(count, bool)
-    lines, normals = _evaluate(model, theta, xi)
-    cost = _line_cost(model, theta, lines) + (xi**2).sum(axis=1)
+    lines, normals = evaluate(model, theta, xi)
+    cost = line_cost(model, theta, lines) + (xi**2).sum(axis=1)
     for _ in range(ROUNDS):
         square, gradient = _joint(model, theta, xi, normals)
         step = (inverse_of(_damped(square, damping)) @ gradient[:, :, None])[:, :, 0]
-        step *= np.where(settled, 0.0, _shortened(step))[:, None]
+        step *= np.where(settled, 0.0, shortened(step))[:, None]
         trial, trial_xi = theta + step[:, :5], xi + step[:, 5:]
-        trial_cost = _data_cost(model, trial, trial_xi) + (trial_xi**2).sum(axis=1)
+        trial_cost = data_cost(model, trial, trial_xi) + (trial_xi**2).sum(axis=1)
         better = trial_cost <= cost * (1.0 + 1e-12) + 1e-12
         theta, xi = np.where(better[:, None], trial, theta), np.where(better[:, None], trial_xi, xi)
         damping = np.where(better, np.maximum(damping * 0.1, 1e-12), damping * 10.0)
         size = np.sqrt(np.abs((gradient * step).sum(axis=1)))
         settled |= (better & (size < SETTLED)) | (damping > 1e12)
-        lines, normals = _evaluate(model, theta, xi)
-        cost = _line_cost(model, theta, lines) + (xi**2).sum(axis=1)
+        lines, normals = evaluate(model, theta, xi)
+        cost = line_cost(model, theta, lines) + (xi**2).sum(axis=1)
         if settled.all():
             break
     settled |= (size < FLAT) & np.isfinite(cost)
-    private, cross, shared, _, _ = _assemble(model, theta, normals)
+    private, cross, shared, _, _ = assemble(model, theta, normals)
     inverse = inverse_of(private)
     response = -inverse @ cross
     spread = _posterior(shared + np.swapaxes(cross, 1, 2) @ response)
@@ -322,19 +149,6 @@ def _readings_root(spread: Array) -> Array:
     return root
 
 
-def inverse_of(square: Array) -> Array:
-    """Inverses of symmetric normal matrices, shape (..., n, n), scaled to a unit diagonal first.
-
-    A direction that the readings leave open gets a large variance instead of none, and no step.
-    """
-    index = np.arange(square.shape[-1])
-    size = np.sqrt(np.maximum(square[..., index, index], 1e-30))
-    values, vectors = np.linalg.eigh(square / (size[..., :, None] * size[..., None, :]))
-    reciprocal = vectors / np.maximum(values, SINGULAR_SQUARE)[..., None, :]
-    inverse: Array = (reciprocal @ np.swapaxes(vectors, -1, -2)) / (size[..., :, None] * size[..., None, :])
-    return inverse
-
-
 def _posterior(information: Array) -> Array:
     """Covariance (1 + M)^-1 of inputs with a unit normal prior; information M from readings is never negative."""
     values, vectors = np.linalg.eigh(information)
@@ -364,50 +178,11 @@ def ranks(adjusted: Adjusted) -> tuple[Indices, Flags]:
 
 def _joint(model: Model, theta: Array, xi: Array, normals: Mapping[str, Normal]) -> tuple[Array, Array]:
     """Normal matrix (N, 5 + K, 5 + K) and gradient of each particle with its own copy of the shared inputs."""
-    private, cross, shared, gradient, shared_gradient = _assemble(model, theta, normals)
+    private, cross, shared, gradient, shared_gradient = assemble(model, theta, normals)
     width = xi.shape[1]
     top = np.concatenate([private, cross], axis=2)
     bottom = np.concatenate([np.swapaxes(cross, 1, 2), shared + np.eye(width)], axis=2)
     return np.concatenate([top, bottom], axis=1), np.concatenate([gradient, shared_gradient - xi], axis=1)
-
-
-@dataclass
-class _Member:
-    """One session while a group is adjusted."""
-
-    model: Model
-    theta: Array
-    columns: Indices  # place of the session's inputs among the group's
-    lines: Mapping[str, Linearised]
-    normals: Mapping[str, Normal]
-    blocks: list[Model] = field(init=False)
-
-    def __post_init__(self) -> None:
-        count = self.model.particles
-        starts = range(0, count, BLOCK) if count > BLOCK else ()
-        self.blocks = [self.model.subset(np.arange(one, min(one + BLOCK, count), dtype=np.intp)) for one in starts]
-
-    def renew(self, xi: Array) -> None:
-        own = xi[None, self.columns]
-        if not self.blocks:
-            self.lines, self.normals = _evaluate(self.model, self.theta, own)
-            return
-        found = [
-            _lines(block, self.theta[place * BLOCK : place * BLOCK + block.particles], own)
-            for place, block in enumerate(self.blocks)
-        ]
-        self.lines = {
-            name: _joined([lines[name] for lines in found if name in lines])
-            for name in self.model.logs
-            if len(self.model.logs[name])
-        }
-        self.normals = _normals(self.model, self.lines)
-
-    def cost(self) -> float:
-        return float(_line_cost(self.model, self.theta, self.lines).sum())
-
-    def trial_cost(self, theta: Array, xi: Array) -> float:
-        return float(_data_cost(self.model, theta, xi[None, self.columns]).sum())
 
 
 def adjust_together(models: list[Model], starts: list[Array]) -> list[Adjusted]:
@@ -425,101 +200,153 @@ def adjust_together(models: list[Model], starts: list[Array]) -> list[Adjusted]:
     list of Adjusted
         In the order given; xi and C are those of each session's own inputs.
     """
-    owners = [[model.setting.inputs[one].name for one in model.setting.uncertain] for model in models]
     known = {
         model.setting.inputs[one].name: model.setting.inputs[one] for model in models for one in model.setting.uncertain
     }
     group = tuple(known[name] for name in sorted(known))
     place = {one.name: index for index, one in enumerate(group)}
-    xi = np.zeros(len(place))
-    members = []
-    for model, start, names in zip(models, starts, owners, strict=True):
-        member = _Member(model, start.copy(), np.array([place[name] for name in names], np.intp), {}, {})
-        member.renew(xi)
-        members.append(member)
-    settled = False
-    stretch, last = 1.0, None
-    enough = SETTLED_TOGETHER * np.sqrt(max(sum(model.particles for model in models), 9))
+    xi: Array = np.zeros(len(group))
+    columns = [
+        np.array([place[model.setting.inputs[one].name] for one in model.setting.uncertain], np.intp)
+        for model in models
+    ]
+    few = _few(models, starts, columns, xi)
+    if few:
+        there, _ = _settle(few, xi)
+    members = [Member(*given, xi) for given in zip(models, starts, columns, strict=True)]
+    if few:
+        for one in members:
+            one.theta = one.follow(one.theta + one.response @ (there - xi)[one.columns], there)
+            one.renew(there)
+        xi = there
+    xi, settled = _settle(members, xi)
+    return _finished(members, xi, settled, group)
+
+
+def _few(models: list[Model], starts: list[Array], columns: list[Indices], xi: Array) -> list[Member]:
+    """Some particles of each session to stand for all, where there are many: enough to begin with, at less cost."""
+    if max((model.particles for model in models), default=0) < 4 * FEW:
+        return []
+    found = []
+    for model, start, own in zip(models, starts, columns, strict=True):
+        chosen = np.arange(0, model.particles, max(1, model.particles // FEW), dtype=np.intp)
+        found.append(Member(model.subset(chosen), start[chosen], own, xi, model.particles / max(len(chosen), 1)))
+    return found
+
+
+def _settle(members: list[Member], xi: Array) -> tuple[Array, bool]:
+    """Move all members and the shared inputs to where the normal equations hold; the inputs, and whether they settled.
+
+    Far off a step must lower chi-square. Near the end it need not: with the noise of the dc voltage in u and slopes at
+    the likeliest voltages, the normal equations hold a little beside its minimum.
+    """
+    many = float(np.sqrt(max(sum(one.model.particles for one in members), 9)))
+    enough, near, volume = SETTLED_TOGETHER * many, NEAR * many, np.zeros_like(xi)
+    walked = Walked()
     for _ in range(ROUNDS):
-        cost = sum(one.cost() for one in members) + float(xi @ xi)
-        parts, move, size = _group_step(members, xi)
-        if stretch == 1.0 and last is not None and size < CLOSE:
-            stretch = _stretch(move, last)
-        last = move
-        move = stretch * move
-        steps = [own + response @ move[one.columns] for one, (own, response) in zip(members, parts, strict=True)]
-        factor = min([1.0, *(float(_shortened(step).min()) for step in steps if len(step))])
+        information = _information(members, len(xi))
+        move, size = _group_step(members, information, xi, volume)
+        close = size < near or bool(walked.moves)
+        if close:
+            if size > VOLUME_SETTLED or not walked.moves:
+                volume = _group_volume(members, information, xi)
+                move, size = _group_step(members, information, xi, volume)
+            move = walked.next_move(xi, move, information)
+        steps = [one.own + one.response @ move[one.columns] for one in members]
+        factor = min([1.0, *(float(shortened(step).min()) for step in steps if len(step))])
         factor = min(factor, FARTHEST_TOGETHER / max(float(np.abs(move).max(initial=0.0)), FARTHEST_TOGETHER))
+        bound = sum(one.cost for one in members) + float(xi @ xi)
+        bound += SLACK * (1.0 + size**2) if close else bound * 1e-12 + 1e-9
         while True:
-            trial = sum(
-                one.trial_cost(one.theta + factor * step, xi + factor * move)
-                for one, step in zip(members, steps, strict=True)
-            ) + float(((xi + factor * move) ** 2).sum())
-            if trial <= cost * (1.0 + 1e-12) + 1e-9 or factor < 1e-9:
+            there = xi + factor * move
+            thetas = [one.follow(one.theta + factor * step, there) for one, step in zip(members, steps, strict=True)]
+            trial = sum(one.cost_at(theta, there) for one, theta in zip(members, thetas, strict=True))
+            if trial + float(there @ there) <= bound or factor < 1e-9:
                 break
             factor *= 0.5
-        if factor >= 1e-9:
-            xi = xi + factor * move
-            for one, step in zip(members, steps, strict=True):
-                one.theta = one.theta + factor * step
-                one.renew(xi)
-        if size < enough or factor < 1e-9:
-            settled = factor >= 1e-9 or size < 1e-3
-            break
-    return _finished(members, xi, group, settled)
+        if factor < 1e-9:
+            return xi, size < 1e-3
+        xi = there
+        for one, theta in zip(members, thetas, strict=True):
+            one.theta = theta
+            one.renew(xi)
+        if size < enough and close:
+            return xi, True
+    return xi, False
 
 
-def _reduced(member: _Member) -> tuple[Array, Array, Array, Array, Array, Array]:
-    """Inverse private block, response, own step, gradient, and the share of the shared inputs' normal equations."""
-    private, cross, shared, gradient, shared_gradient = _assemble(member.model, member.theta, member.normals)
-    inverse = inverse_of(private)
-    response = -inverse @ cross
-    own = inverse @ gradient[:, :, None]
-    square = shared.sum(axis=0) + (np.swapaxes(cross, 1, 2) @ response).sum(axis=0)
-    right = shared_gradient.sum(axis=0) - (np.swapaxes(cross, 1, 2) @ own).sum(axis=0)[:, 0]
-    return inverse, response, own[:, :, 0], square, right, gradient
+@dataclass
+class Walked:
+    """Points and Gauss-Newton moves of the last rounds, for Anderson's mixing.
 
-
-def _stretch(move: Array, last: Array) -> float:
-    """Length of further steps when each leaves a share r of the error to the next: 1 / (1 - r), Aitken's process.
-
-    Gauss-Newton leaves the curvature of the equations out, which makes its steps too long or too short by one ratio.
+    Each move leaves a share of the way to the next, since the curvature of the equations is left out; a combination of
+    moves that would leave least leaves far less (Anderson, J. Assoc. Comput. Mach. 12, 1965, 547).
     """
-    ratio = float(move @ last) / max(float(last @ last), 1e-300)
-    return 1.0 / (1.0 - ratio) if abs(ratio) < 0.75 else 1.0
+
+    points: list[Array] = field(default_factory=list)
+    moves: list[Array] = field(default_factory=list)
+
+    def next_move(self, point: Array, move: Array, information: Array) -> Array:
+        """The mixed move from a point, differences measured by the information on the inputs and their priors."""
+        points, moves = self.points[-DEPTH:], self.moves[-DEPTH:]
+        self.points, self.moves = [*points, point], [*moves, move]
+        if not moves:
+            return move
+        changes = np.stack([move - one for one in moves], axis=1)
+        metric = information + np.eye(len(point))
+        square = changes.T @ metric @ changes
+        share = np.linalg.lstsq(square, changes.T @ metric @ move, rcond=1e-10)[0]
+        ways = np.stack([point - one for one in points], axis=1) + changes
+        mixed: Array = move - ways @ share
+        return mixed
 
 
-def _group_step(members: list[_Member], xi: Array) -> tuple[list[tuple[Array, Array]], Array, float]:
-    """Gauss-Newton steps: of each session its own and its response, of the inputs; root of the fall in chi-square."""
-    square, right = np.eye(len(xi)), -xi
-    parts = [_reduced(one) for one in members]
-    for one, part in zip(members, parts, strict=True):
-        square[np.ix_(one.columns, one.columns)] += part[3]
-        right[one.columns] += part[4]
-    move = np.linalg.solve(square, right)
-    promised = float(move @ right) + sum(float((part[5] * part[2]).sum()) for part in parts)
-    return [(part[2], part[1]) for part in parts], move, float(np.sqrt(abs(promised)))
+def _information(members: list[Member], count: int) -> Array:
+    """What the readings of all sessions tell of the shared inputs, without the priors, (K, K)."""
+    square = np.zeros((count, count))
+    for one in members:
+        square[np.ix_(one.columns, one.columns)] += one.information
+    return square
 
 
-def _finished(members: list[_Member], xi: Array, group: tuple[Input, ...], settled: bool) -> list[Adjusted]:
-    parts = [_reduced(one) for one in members]
-    square = np.eye(len(xi))
-    for one, part in zip(members, parts, strict=True):
-        square[np.ix_(one.columns, one.columns)] += part[3]
-    spread = _posterior(square - np.eye(len(xi)))
+def _group_volume(members: list[Member], information: Array, xi: Array) -> Array:
+    """Gradient of the volume term of all sessions by the shared inputs."""
+    spread = _posterior(information)
+    count = sum(one.weight * len(of_the_lot(one.model)) for one in members)
+    gradient = np.zeros(len(xi))
+    for one in members:
+        own = one.columns
+        gradient[own] += one.weight * volume_gradient(
+            one.model, one.theta, xi[own], one.response, spread[np.ix_(own, own)]
+        )
+    return gradient * (1.0 - 1.0 / max(count, 1.0))  # what the others do: one particle is the same as alone
+
+
+def _group_step(members: list[Member], information: Array, xi: Array, volume: Array) -> tuple[Array, float]:
+    """Gauss-Newton step of the inputs, and the root of the fall in chi-square that it promises with the particles'."""
+    right = -xi - volume
+    for one in members:
+        right[one.columns] += one.right
+    move = np.linalg.solve(information + np.eye(len(xi)), right)
+    promised = float(move @ right) + sum(one.promised for one in members)
+    return move, float(np.sqrt(abs(promised)))
+
+
+def _finished(members: list[Member], xi: Array, settled: bool, group: tuple[Input, ...]) -> list[Adjusted]:
+    spread = _posterior(_information(members, len(xi)))
     root = _readings_root(spread)
     found = []
-    for one, (inverse, response, *_) in zip(members, parts, strict=True):
+    for one in members:
         own = xi[one.columns]
         shared = spread[np.ix_(one.columns, one.columns)]
-        cost = np.array([one.cost() + float(own @ own)])
+        cost = np.array([one.cost + float(own @ own)])
         found.append(
             Adjusted(
                 one.model,
                 one.theta,
                 own[None],
-                inverse,
-                response,
+                one.inverse,
+                one.response,
                 shared[None],
                 spread[None, one.columns],
                 root[None, one.columns],

@@ -14,9 +14,10 @@ from typing import Any, cast
 
 import numpy as np
 
-from reduction.adjustment import Adjusted, Model, adjust_alone, adjust_together
+from reduction.adjustment import Adjusted, adjust_alone, adjust_together
 from reduction.budget import OwnSize, result_logarithms
 from reduction.methods import LN_GAMMA, SHAPE, Array, Indices, Readings, Setting, predict, surroundings
+from reduction.normalequations import Model
 from reduction.shapes import draws, spread_factor, stream
 
 BATCH = 250  # trials adjusted at a time, to bound memory; each trial is adjusted by itself

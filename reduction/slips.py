@@ -7,7 +7,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 from scipy import stats
 
-from reduction.adjustment import Adjusted, Model, adjust_alone
+from reduction.adjustment import Adjusted, adjust_alone
+from reduction.normalequations import Model
 
 SUSPECT = 1e-3  # p of chi-square below which a particle's readings are searched for a slip
 CURED = 0.01  # p above which a factor counts as an explanation

@@ -10,11 +10,8 @@ from scipy import stats
 
 from reduction.adjustment import (
     Adjusted,
-    Model,
     adjust_alone,
     adjust_together,
-    inverse_of,
-    normal_equations,
     ranks,
 )
 from reduction.agreement import MethodEstimate
@@ -32,12 +29,15 @@ from reduction.methods import (
     Readings,
     linearise,
     predict,
+    with_departure,
     with_reynolds,
 )
+from reduction.normalequations import Model, inverse_of, normal_equations
 from reduction.preparation import Prepared, with_u
 from reduction.slips import Slip, slips_of
 from reduction.starts import Start, starts_of
 
+DEPARTURE_ROUNDS = 3  # an error of the shift shrinks by its own relative size in each
 OUTLIER = 4.0  # standard deviations from its method's fit beyond which a reading is flagged
 POOR_P = 1e-3  # p of chi-square below which a secular log is doubted
 DISTINCT = 0.3  # in ln s, beyond which two solutions differ however wide u is
@@ -84,11 +84,13 @@ def fit_session(prepared: Prepared, scatter_policy: str) -> Reduced:
     drifting = _drifting(model, prepared)
     model = _with_drift(model, drifting)
     model, starts, theta = _started(model)
+    model = _with_departures(model, theta)
     fits = _fit_methods(model, theta)
     scatter: dict[str, float] = {}
     if any(mask.any() for mask in prepared.unstated.values()):
         model, scatter = _from_scatter(model, prepared, fits)
         model, starts, theta = _started(model)
+        model = _with_departures(model, theta)
         fits = _fit_methods(model, theta)
         _say_what_lacks_u(prepared, model, fits)
     flags = [_method_flags(fits, index, scatter) for index in range(count)]
@@ -123,7 +125,8 @@ def without_diameter(reduced: Reduced) -> Reduced:
     model = reduced.model.without("diameter")
     if "height" in model.logs:  # shifts estimated with the diameter known must not stay
         height = model.logs["height"]
-        model = replace(model, logs={**model.logs, "height": replace(height, reynolds=np.zeros(len(height)))})
+        none = np.zeros(len(height))
+        model = replace(model, logs={**model.logs, "height": replace(height, reynolds=none, departure=none)})
     alone = _with_shifts(adjust_alone(model, reduced.alone.theta))
     return replace(reduced, model=alone.model, alone=alone, dof=alone_dof(alone))
 
@@ -403,12 +406,28 @@ def _alone(
 
 
 def _with_shifts(adjusted: Adjusted) -> Adjusted:
-    """The same adjusted again with the finite-Reynolds shifts that its values imply."""
+    """The same adjusted again with the shifts of heights that its values imply.
+
+    Those of the Reynolds number are a component and estimated once; those of the field's departure may be corrected
+    for, and are then estimated until the values they come from follow them no more.
+    """
     model = adjusted.model
     if "height" not in model.logs:
         return adjusted
-    height = with_reynolds(model.setting, model.logs["height"], adjusted.theta, model.sign)
-    return adjust_alone(replace(model, logs={**model.logs, "height": height}), adjusted.theta, near=True)
+    for _ in range(1 if model.setting.field_map is None else DEPARTURE_ROUNDS):
+        height = with_reynolds(model.setting, model.logs["height"], adjusted.theta, model.sign)
+        height = with_departure(model.setting, height, adjusted.theta, model.sign)
+        model = replace(model, logs={**model.logs, "height": height})
+        adjusted = adjust_alone(model, adjusted.theta, near=True)
+    return adjusted
+
+
+def _with_departures(model: Model, theta: Array) -> Model:
+    """The model with heights shifted as the field's departure has it at its starts, before anything is fitted."""
+    if "height" not in model.logs or model.setting.field_map is None:
+        return model
+    height = with_departure(model.setting, model.logs["height"], theta, model.sign, observed=True)
+    return replace(model, logs={**model.logs, "height": height})
 
 
 def alone_dof(alone: Adjusted) -> Indices:

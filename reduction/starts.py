@@ -8,7 +8,6 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from reduction import motion
-from reduction.adjustment import Model
 from reduction.fits import BAD_READING, balance_start, drag_rate_grid
 from reduction.methods import (
     LN_GAMMA,
@@ -24,6 +23,7 @@ from reduction.methods import (
     scaled_motion,
     surroundings,
 )
+from reduction.normalequations import Model
 
 BASINS = 3  # starts kept at most
 APART = 0.8  # in ln s or ln gamma between two starts worth trying both

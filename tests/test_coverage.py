@@ -115,11 +115,11 @@ def test_intervals_of_particles_alone_hold_as_often(found, column):
 
 
 # How much eight beads tell of one another depends on what their readings leave open: with the frequencies read to
-# 0.03 Hz and a narrow lot each bead knows most by itself, and charge narrows by a tenth only.
+# 0.03 Hz, a two-hundredth of the width of the resonance, each bead knows most by itself, and charge narrows by a tenth.
 @pytest.mark.parametrize(
     ("stated", "options", "narrower"),
-    [(COARSE, {"lot": "unused"}, 0.15), ({}, {}, 0.07)],
-    ids=["0.1 Hz, no lot", "0.03 Hz, lot"],
+    [(COARSE, {"lot": "unused"}, 0.2), (COARSE, {}, 0.15), ({}, {}, 0.07)],
+    ids=["0.1 Hz, no lot", "0.1 Hz, lot", "0.03 Hz, lot"],
 )
 def test_eight_dense_beads_with_secular_frequencies_narrow_the_charge(tmp_path, stated, options, narrower):
     case = Case("session of 8", "room_air_dense", particles=8, options=options, stated=stated)

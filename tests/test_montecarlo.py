@@ -11,9 +11,10 @@ from scipy import stats
 from test_adjustment import solved, without_noise
 
 from reduction import budget
-from reduction.adjustment import Model, adjust_alone, adjust_together
+from reduction.adjustment import adjust_alone, adjust_together
 from reduction.budget import RESULTS, OwnSize, effective_dof, interval, results_of
 from reduction.montecarlo import known_results, result_draws, result_intervals
+from reduction.normalequations import Model
 from reduction.quantity import Quantity
 from reduction.shapes import draws, spread_factor, symmetric_ends
 from reduction.simulation import simulate_campaign

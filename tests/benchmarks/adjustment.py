@@ -21,11 +21,12 @@ from typing import Any
 
 import numpy as np
 
-from reduction import adjustment
-from reduction.adjustment import Model, adjust_together
+from reduction import adjustment, normalequations
+from reduction.adjustment import adjust_together
 from reduction.errors import Faults
 from reduction.logs import read_logs
 from reduction.methods import linearise, predict
+from reduction.normalequations import Model
 from reduction.preparation import prepare
 from reduction.settings import load_campaign
 from reduction.simulation import simulate_campaign
@@ -53,11 +54,11 @@ def main(sessions: int, particles: int) -> None:
             starts.append(adjustment.adjust_alone(models[-1], theta).theta)
     before = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024.0
     clock = Clock()
-    adjustment.linearise = clock.timed(linearise)
+    normalequations.linearise = clock.timed(linearise)
     start = time.process_time()
     adjusted = adjust_together(models, starts)
     spent = time.process_time() - start
-    adjustment.linearise = linearise
+    normalequations.linearise = linearise
     peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024.0
     shared = len(adjusted[0].group)
     settled = all(one.settled.all() for one in adjusted)
