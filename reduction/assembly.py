@@ -5,7 +5,7 @@ from __future__ import annotations
 import csv
 import io
 import shutil
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import asdict
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -74,7 +74,7 @@ def _gather_inputs(path: Path, pieces: Sequence[Path]) -> None:
     write_whole(path, text.getvalue().encode())
 
 
-def run_statement(settings: Campaign, plan: Plan, results: Path) -> dict[str, Any]:
+def run_statement(settings: Campaign, plan: Plan, results: Path, inputs: Mapping[str, str]) -> dict[str, Any]:
     """Content of run.json: what the results were made from, and nothing of when, where or by whom.
 
     Parameters
@@ -85,6 +85,8 @@ def run_statement(settings: Campaign, plan: Plan, results: Path) -> dict[str, An
         What the run had to do.
     results : Path
         Where the records lie.
+    inputs : mapping
+        Digest of every input file.
     """
     facts = {name: read_json(folder / FACTS) for name, folder in plan.records(results)}
     left = {str(name): str(reason) for name, reason in settings.leave_out.items()}
@@ -93,12 +95,19 @@ def run_statement(settings: Campaign, plan: Plan, results: Path) -> dict[str, An
     options.pop("when_a_session_fails")  # what it did stands in `left_out`
     return {
         "digest": plan.campaign,
-        "inputs": digests.input_digests(settings.folder),
+        "inputs": dict(inputs),
         "left_out": left,
+        "lock": digests.lock_digest(),
         "package": digests.package_digest(),
         "seed": options["seed"],
         "sessions": {
-            name: {"digest": plan.record_name(name), "status": fact["status"]} for name, fact in facts.items()
+            name: {
+                "date": fact.get("date", ""),
+                "digest": plan.record_name(name),
+                "status": fact["status"],
+                "trap": fact.get("trap", ""),
+            }
+            for name, fact in facts.items()
         },
         "settings": options,
         "versions": dict(digests.versions()),

@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Iterator
-from dataclasses import asdict, dataclass
+from collections.abc import Iterator, Mapping
+from dataclasses import asdict, dataclass, field
 from functools import cached_property
 from pathlib import Path
 
 from reduction import digests
+from reduction.benchrows import KEY
 from reduction.errors import ResultsError
 from reduction.wholefile import write_json
 
@@ -47,6 +48,8 @@ class Plan:
     code: str  # digest of the package and the libraries
     together: bool = False  # whether the sessions are adjusted together
     title: str = ""
+    drawings: dict[str, str] = field(default_factory=dict)  # each trap with drawn electrodes: digest of the drawing
+    marks: dict[str, str] = field(default_factory=dict)  # each bench and the digest that names its marks, if marked
 
     @cached_property
     def batches(self) -> dict[str, list[str]]:
@@ -70,6 +73,14 @@ class Plan:
     def page_name(self, session: str) -> str:
         """Digest of all that the session's report depends on."""
         return digests.digest("page", session, self.record_name(session), self.title)
+
+    def marks_digest(self, batch: str) -> str:
+        """Digest of all that the marks of one batch depend on."""
+        return digests.digest("marks", *(part for name in self.batches[batch] for part in (name, self.marks[name])))
+
+    def bench_page_name(self, session: str) -> str:
+        """Digest of all that the feedback of one bench depends on."""
+        return digests.digest("feedback", session, self.marks[session], self.title)
 
     def records(self, results: Path) -> Iterator[tuple[str, Path]]:
         """Each session and the folder of the record its results are made from."""
@@ -96,6 +107,11 @@ def record_folder(results: Path, session: str, name: str) -> Path:
     return results / STATE / "records" / session / name
 
 
+def constants_folder(results: Path) -> Path:
+    """Folder of the trap constants computed from drawings, each file named by the digest of its drawing."""
+    return results / STATE / "traps"
+
+
 def make_plan(campaign: Path) -> Plan:
     """Read a campaign's files and settle what a run has to do."""
     settings = digests.campaign_settings(campaign)
@@ -103,22 +119,31 @@ def make_plan(campaign: Path) -> Plan:
     code = digests.code_digest()
     inputs = digests.session_inputs(campaign, names)
     sessions = {name: digests.digest(inputs[name], code) for name in names}
-    odd = _other_names(campaign)
-    files = digests.digest(*(part for item in digests.input_digests(campaign).items() for part in item), *odd)
+    marks = digests.mark_inputs(campaign, sessions)
     title = settings.get("title", "")
     return Plan(
         sessions=sessions,
         inputs=inputs,
-        campaign=digests.digest(files, code),
+        campaign=campaign_digest(campaign, digests.input_digests(campaign), code),
         code=code,
         together=settings.get("adjust") == "campaign",
         title=title if isinstance(title, str) else "",
+        drawings=digests.drawings(campaign),
+        marks=marks,
     )
+
+
+def campaign_digest(campaign: Path, inputs: Mapping[str, str], code: str) -> str:
+    """Digest of every file of the campaign (`inputs`), the names beside them, the key of pseudonyms, and the code."""
+    odd = _other_names(campaign)
+    key = digests.content(campaign / KEY) or b""  # what pseudonyms depend on, named nowhere
+    files = digests.digest(*(part for item in inputs.items() for part in item), *odd, key)
+    return digests.digest(files, code)
 
 
 def _other_names(campaign: Path) -> list[str]:
     """Names the check may find fault with: a new one must make a run begin, so that the check is run."""
     names = [path.name for path in campaign.glob("*.y*ml")]
-    for pattern in ("traps/*", "species/*", "sessions/*", "sessions/*/*"):
+    for pattern in ("traps/*", "species/*", "sessions/*", "sessions/*/*", "marking/*"):
         names += [path.relative_to(campaign).as_posix() for path in campaign.glob(pattern)]
     return sorted(name for name in names if "/." not in name)

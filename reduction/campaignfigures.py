@@ -25,6 +25,7 @@ from reduction.figurestyle import (
 from reduction.panels import column, heading, number, pair_name
 
 Row = Mapping[str, Any]
+_ROOMY = 60  # sessions up to which their marks keep their full size
 
 
 def sessions_in_time(sessions: Sequence[Row]) -> Drawing | None:
@@ -43,24 +44,25 @@ def sessions_in_time(sessions: Sequence[Row]) -> Drawing | None:
     left, across = 13.0, WIDTH - 15.0
     twin: list[tuple[object, ...]] = []
     colour, marker, _ = series(0)
+    thin, small = (0.8, 3.2) if len(sessions) <= _ROOMY else (0.35, 1.8)
     stray = place(figure, left, 66, across, 21)
     prior, u_prior = column(sessions, "stray_estimate"), column(sessions, "stray_u")
     after, u_after = column(sessions, "stray_adjusted"), column(sessions, "stray_adjusted_u")
     stray.bar(x, 2 * u_prior, 0.8, prior - u_prior, color=BAND)
-    bars(stray, x, after, u_after, colour)
-    points(stray, x, after, colour, marker)
+    bars(stray, x, after, u_after, colour, width=thin)
+    points(stray, x, after, colour, marker, size=small)
     stray.set_ylim(*limits(prior - u_prior, prior + u_prior, after - u_after, after + u_after))
     heading(stray, "stray field / (V m⁻¹): grey as stated, points as adjusted")
     agree = place(figure, left, 38, across, 17)
     worst = column(sessions, "worst")
     agree.axhspan(0, 1, facecolor=BAND, edgecolor="none", zorder=0)
-    points(agree, x, worst, series(1)[0], series(1)[1])
+    points(agree, x, worst, series(1)[0], series(1)[1], size=small)
     agree.set_ylim(0, 1.12 * float(np.nanmax(np.append(worst, 1.1))))
     heading(agree, "largest normalised error between two methods: grey up to 1")
     humid = place(figure, left, 10, across, 17)
     humidity, u_humidity = column(sessions, "humidity"), column(sessions, "u_humidity")
-    bars(humid, x, humidity, u_humidity, series(2)[0])
-    points(humid, x, humidity, series(2)[0], series(2)[1])
+    bars(humid, x, humidity, u_humidity, series(2)[0], width=thin)
+    points(humid, x, humidity, series(2)[0], series(2)[1], size=small)
     humid.set_ylim(*limits(humidity - np.nan_to_num(u_humidity), humidity + np.nan_to_num(u_humidity), margin=0.15))
     heading(humid, "relative humidity / %")
     step = max(1, math.ceil(len(sessions) / 9))

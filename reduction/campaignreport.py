@@ -7,8 +7,21 @@ from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
-from reduction import campaignfigures, comparisonpages, comparisonreport, figurestyle, records, tables
+import pandas as pd
+
+from reduction import (
+    campaignfigures,
+    campaignsections,
+    comparisonfigures,
+    comparisonpages,
+    comparisonreport,
+    figurestyle,
+    records,
+    tables,
+    trapreport,
+)
 from reduction.campaigntables import (
+    MOST_LISTED,
     NOT_TAKEN,
     exact_table,
     input_table,
@@ -16,22 +29,40 @@ from reduction.campaigntables import (
     particle_table,
     provenance_table,
     remark_table,
+    scope_table,
+    session_table,
     settings_table,
 )
+from reduction.limits import VALUES, sentence, spread_of
 from reduction.quantity import QuantityError, read_quantity
 from reduction.sheets import rows_of
+from reduction.trapconstants import from_plain
 from reduction.typeset import NONE, foreign, significant, visible
 from reduction.wholefile import read_json
-from reduction.wording import CAUTIONS, counted, input_words
+from reduction.wording import counted, input_words
 
 Row = dict[str, Any]
 FIGURES = ("agreement", "comparison", "sessions_in_time")  # whose numbers have a file of their own
-_ELSEWHERE = {"differences": "contrasts.csv", "ranks": "comparison.csv", "trends": "session_means.csv"}
+_ELSEWHERE = {
+    "means": "comparison.csv",
+    "differences": "contrasts.csv",
+    "ranks": "comparison.csv",
+    "trends": "session_means.csv",
+}
+CHARGE_FILES = ("histogram.csv", "charge_distribution.csv", "charge_summary.csv")
+SUBLINE = "Charge-to-mass ratio, mass and charge of single trapped particles"
+TITLE_MOST = 240  # characters of a title on the first page
 _MOVED = 2.0  # in units of the stated u: beyond, an adjusted input is worth a remark
+BUDGET = {"session", "particle", "result", "input", "share"}  # columns of the budget that are told of
 
 
 def content(
-    results: Path, record_folders: Mapping[str, Path], *, digest: str, title: str = ""
+    results: Path,
+    record_folders: Mapping[str, Path],
+    *,
+    digest: str,
+    title: str = "",
+    traps: Mapping[str, Path] | None = None,
 ) -> tuple[dict[str, Any], dict[str, figurestyle.Drawing]]:
     """Everything the template sets, and the figures by name, of one results folder."""
     run = read_json(results / "run.json")
@@ -54,36 +85,105 @@ def content(
                 "agreement": campaignfigures.agreement(agreement)}  # fmt: skip
         drawings |= {name: drawing for name, drawing in made.items() if drawing}
         charges = comparisonreport.charge_drawings(pages)
-    left_out = left_out_table(run, facts, particles)
     plain_title = visible(str(title or settings.get("title") or ""))
     title = foreign(plain_title)
+    budget = tables.read_table(results / "budget.csv", columns=BUDGET)
+    parts = {
+        "trust": _trust(particles, agreement, inputs),
+        "left_out": left_out_table(run, facts, particles),
+        "limits": scope_table(budget, particles),
+        "limits_words": "Share of each scope in the variance of single particles, the median over all of them, in "
+        "percent; beside it their relative standard uncertainty. Inputs correlated by the adjustment need not add up "
+        "to 100 %.",
+        "limits_said": _limits(budget, particles),
+        "sessions": session_table(in_time, facts, particles),
+        "inputs": input_table(inputs),
+        "traps": _trap_pages(facts, traps or {}),
+        "particles": particle_table(particles, group_of),
+        "listed": f"The first {MOST_LISTED} of {len(particles)} particles; particles.csv has all of them. "
+        if len(particles) > MOST_LISTED
+        else "",
+        "remarks": remark_table(particles),
+        "exact": exact_table(facts),
+        "settings": settings_table(settings, title=plain_title if len(plain_title) > TITLE_MOST else ""),
+        "provenance": provenance_table(run),
+        "input_files": _input_files(run),
+    }
+    said = _captions(pages, agreement, in_time)
+    figures = {name: _set(drawing, name, said[name]) for name, drawing in drawings.items()}
     dates = sorted(str(f["date"]) for f in facts.values() if f.get("date"))
     doc: dict[str, Any] = {
         "title": f"Campaign report: {plain_title}" if title else "Campaign report",
         "kind": "Campaign report",
         "headline": title if 0 < len(title) <= 80 else "Campaign",
-        "subline": title if len(title) > 80 else "Charge-to-mass ratio, mass and charge of single trapped particles",
+        "subline": foreign(_cut(plain_title)) if len(title) > 80 else SUBLINE,
         "running": title if 0 < len(title) <= 70 else "Campaign report",
         "digest": digest,
         "digest_word": "Run",
         "facts": _facts(facts, particles, dates),
-        "comparison": comparisonreport.content(pages),
-        "charge_figures": [[foreign(name), comparisonreport.set_drawing(drawing, "")] for name, drawing in charges],
-        "trust": _trust(particles, agreement, inputs),
-        "left_out": left_out,
-        "figures": {name: _set(drawing, name) for name, drawing in drawings.items()},
-        "agreement_words": "One mark per particle; outside the grey band two methods disagree by more than twice the "
-        "standard uncertainty of their difference.",
-        "inputs": input_table(inputs),
-        "particles": particle_table(particles, group_of),
-        "remarks": remark_table(particles),
-        "exact": exact_table(facts),
-        "settings": settings_table(settings),
-        "provenance": provenance_table(run),
-        "input_files": _input_files(run),
-        "cautions": [list(words) for words in CAUTIONS],
+        "sections": campaignsections.sections(
+            comparisonreport.content(pages), figures, _charges(pages, charges), parts
+        ),
     }
     return doc, drawings
+
+
+def _trap_pages(facts: Mapping[str, Row], traps: Mapping[str, Path]) -> list[Row]:
+    """Sections for each trap of a reduced session whose constants follow from the drawing of its electrodes."""
+    used = sorted({str(fact["trap"]) for fact in facts.values() if fact.get("trap") in traps})
+    pages = (trapreport.content(name, from_plain(read_json(traps[name]))) for name in used)
+    return [one for number, page in enumerate(pages, 1) for one in trapreport.sections(number, page)]
+
+
+def _cut(title: str) -> str:
+    """A title that leaves room for the answer on its page; the settings have it whole."""
+    return title if len(title) <= TITLE_MOST else title[: TITLE_MOST - 1] + "\N{HORIZONTAL ELLIPSIS}"
+
+
+def _captions(pages: comparisonpages.Pages, agreement: Sequence[Row], in_time: Sequence[Row]) -> dict[str, str]:
+    """How many particles and sessions each figure rests on."""
+    groups = pages.groups
+    particles = counted(sum(int(row["particles"]) for row in groups), "particle")
+    sessions = counted(len({row["session"] for row in pages.rows["session_means"]}), "session")
+    known = [row for row in agreement if math.isfinite(row["normalized_error"])]
+    own = len({(row["session"], row["particle"]) for row in known})
+    all_of_them = f"{particles} in {sessions}, {counted(len(groups), 'group')}."
+    tested = sum(math.isfinite(row["p"]) for row in pages.pairs)
+    drawn = min(tested, comparisonfigures.DIFFERENCES_MOST)
+    pairs = counted(tested, "pair") if drawn == tested else f"{drawn} of {tested} pairs"
+    return {
+        "means": all_of_them,
+        "comparison": all_of_them,
+        "differences": f"{pairs} of groups; {particles} in {sessions}.",
+        "ranks": all_of_them,
+        "trends": f"{counted(len(pages.rows['session_means']), 'session mean')} of {particles}.",
+        "agreement": f"{counted(len(known), 'comparison')} of {counted(own, 'particle')} in "
+        f"{counted(len({row['session'] for row in known}), 'session')}.",
+        "sessions_in_time": f"{counted(len(in_time), 'session')} in the order measured.",
+    }
+
+
+def _charges(pages: comparisonpages.Pages, charges: Sequence[tuple[str, figurestyle.Drawing]]) -> list[tuple[str, Row]]:
+    """Figures of the charges, each with its name and how many particles and sessions it rests on."""
+    set_ones = []
+    for (name, drawing), summary in zip(charges, pages.rows["charge_summary"], strict=False):
+        particles, sessions = int(summary["particles"]), int(summary["sessions"])
+        words = f"{counted(particles, 'particle')} in {counted(sessions, 'session')}."
+        figure = {**comparisonreport.set_drawing(drawing, words), "files": list(CHARGE_FILES)}
+        set_ones.append((foreign(name), figure))
+    return set_ones
+
+
+def _limits(budget: pd.DataFrame, particles: Sequence[Row]) -> list[str]:
+    """What makes up most of the variance of charge-to-mass ratio and charge, in words."""
+    said = []
+    for result in ("charge_to_mass", "charge"):
+        own = budget[budget["result"] == result]
+        names = own["input"].str.replace(r"^session/[^/]+/", "session//", regex=True)  # those of all sessions as one
+        own = own.assign(particle=own["session"] + "/" + own["particle"], input=names)
+        spread = spread_of(particles, *VALUES[result])
+        said.append(sentence(rows_of(own[["particle", "result", "input", "share"]]), result, spread))
+    return [text for text in said if text]
 
 
 def _in_time(facts: Mapping[str, Row], agreement: Sequence[Row]) -> list[Row]:
@@ -125,9 +225,9 @@ def _read(value: object) -> tuple[float, float]:
     return read.estimate, read.u
 
 
-def _set(drawing: figurestyle.Drawing, name: str) -> Row:
+def _set(drawing: figurestyle.Drawing, name: str, words: str) -> Row:
     file = _ELSEWHERE.get(name, f"figures/{name}.csv")
-    return comparisonreport.set_drawing(drawing, f"The numbers drawn are in {file}.")
+    return {**comparisonreport.set_drawing(drawing, words), "files": [file]}
 
 
 def _facts(facts: Mapping[str, Row], particles: Sequence[Row], dates: Sequence[str]) -> list[list[str]]:

@@ -7,6 +7,9 @@ import math
 from collections.abc import Mapping, Sequence
 from typing import Any
 
+import pandas as pd
+
+from reduction.limits import VALUES, spread_of
 from reduction.sheets import Sheet, columns_of, quantity_column, sheet
 from reduction.typeset import (
     MINUS,
@@ -14,11 +17,23 @@ from reduction.typeset import (
     foreign,
     moved,
     pair,
+    percent,
+    significant,
 )
-from reduction.wording import counted, flag_words, input_words, status_words, unit_words
+from reduction.wording import RESULTS, counted, flag_words, input_words, status_words, unit_words
 
 Row = dict[str, Any]
+SCOPES = {  # heads of columns
+    "particle": "Own\nreadings",
+    "others": "Other\nparticles'",
+    "session": "Session\ninputs",
+    "trap": "Trap",
+    "species": "Species",
+    "instrument": "Instru-\nments",
+    "campaign": "Formulas",
+}
 NOT_TAKEN = ("left_out", "failed", "excluded")  # statuses of sessions without results
+MOST_LISTED = 500  # particles: some eight pages, beyond which a table is for programs
 
 
 def left_out_table(run: Row, facts: Mapping[str, Row], particles: Sequence[Row]) -> Sheet | None:
@@ -57,24 +72,83 @@ def _several(word: str, names: Sequence[str]) -> str:
     return f"{word}s {shown}"
 
 
+def session_table(in_time: Sequence[Row], facts: Mapping[str, Row], particles: Sequence[Row]) -> Sheet | None:
+    """Every session with what it was about and how much came of it, each with its report and its readings to open.
+
+    Parameters
+    ----------
+    in_time : sequence of mappings
+        Sessions taken, in the order measured, with `session`, `date` and `worst` (largest normalised error).
+    facts : mapping
+        Facts of every session by its id; those not taken come last.
+    particles : sequence of mappings
+        Rows of particles.csv.
+    """
+    if not facts:
+        return None
+    taken = {str(row["session"]): row for row in in_time}
+    names = [*taken, *(name for name in facts if name not in taken)]
+    count: dict[str, list[bool]] = {}
+    for p in particles:
+        count.setdefault(p["session"], []).append(math.isfinite(p["charge_to_mass_C_per_kg"]))
+    cells = [
+        [foreign(name, 14) for name in names],
+        [foreign(facts[name].get("date") or NONE) for name in names],
+        *([foreign(facts[name].get(key) or NONE, 14) for name in names] for key in ("trap", "species", "charged_with")),
+        [f"{sum(count.get(name, []))} of {len(count.get(name, []))}" if name in taken
+         else status_words(str(facts[name].get("status"))).partition(" by ")[0] for name in names],
+        [significant(taken[name]["worst"], 2) if name in taken else NONE for name in names],
+        [NONE if name not in taken else "csv" for name in names],
+    ]  # fmt: skip
+    head = ["Session", "Date", "Trap", "Species", "Charged with", "Particles\nmeasured",
+            "Largest nor-\nmalised error", "Readings"]  # fmt: skip
+    reports = {"0": [f"sessions/{name}.pdf" for name in names]}
+    readings = {"7": [f"readings/{name}.csv" if name in taken else "" for name in names]}
+    return {**sheet(head, cells, "lllllrrl", [2, 0, 2, 2, 2, 0, 0, 0]), "links": reports | readings}
+
+
+def scope_table(budget: pd.DataFrame, particles: Sequence[Row]) -> Sheet | None:
+    """Each result of single particles: relative u, and the share of each scope in its variance, medians in percent."""
+    if budget.empty:
+        return None
+    names = pd.Series(budget["input"].unique())
+    scope = dict(zip(names, names.map(_scope), strict=True))
+    keys = [budget["session"], budget["particle"], budget["result"], budget["input"].map(scope).rename("scope")]
+    own = budget["share"].groupby(keys).sum().unstack("scope", fill_value=0)
+    median = own.groupby(level="result").median()
+    results = [name for name in RESULTS if name in median.index]
+    shown = [name for name in SCOPES if name in median.columns and (median[name].abs() >= 0.0005).any()]
+    cells = [
+        [RESULTS[name][0][0].upper() + RESULTS[name][0][1:] for name in results],
+        [spread_of(particles, *VALUES[name]) or NONE for name in results],
+        *([percent(share) for share in median.loc[results, key].tolist()] for key in shown),
+    ]
+    head = ["Result", "Relative u", *(SCOPES[key] for key in shown)]
+    return sheet(head, cells, "l" + "r" * (len(head) - 1), [1] + [0] * (len(head) - 1))
+
+
+def _scope(name: str) -> str:
+    scope, _, rest = str(name).partition("/")
+    return scope if rest else "others"
+
+
 def input_table(inputs: Sequence[Row]) -> Sheet | None:
     """Shared inputs before and after: one row per input, sessions' own ones gathered by what they are."""
-    gathered: dict[tuple[str, str, str], list[Row]] = {}
+    gathered: dict[tuple[str, str, str], dict[str, Row]] = {}
     for row in inputs:
         if row["scope"] == "particle" or not row["u"] > 0:
             continue
         what, whose = input_words(row["input"])
         key = (row["scope"], what, "each session" if row["scope"] == "session" else whose)
-        known = gathered.setdefault(key, [])
-        if repr(row) not in map(repr, known):  # NaN is not equal to itself; adjusted together, sessions agree
-            known.append(row)
+        # by its text, as NaN is not equal to itself; adjusted together, sessions agree
+        gathered.setdefault(key, {}).setdefault(repr(row), row)
     if not gathered:
         return None
     order = ("campaign", "instrument", "trap", "species", "session")
     keys = sorted(gathered, key=lambda k: (order.index(k[0]) if k[0] in order else 9, k[2], k[1]))
     cells: list[list[str]] = [[] for _ in range(7)]
     for key in keys:
-        rows = gathered[key]
+        rows = list(gathered[key].values())
         stated = {pair(r["estimate"], r["u"]) for r in rows}
         after = sorted(r["adjusted_estimate"] for r in rows if math.isfinite(r["adjusted_estimate"]))
         moves = [text for r in rows if (text := moved(r["estimate"], r["u"], r["adjusted_estimate"])) != NONE]
@@ -108,8 +182,11 @@ def input_table(inputs: Sequence[Row]) -> Sheet | None:
 
 
 def particle_table(particles: Sequence[Row], group_of: Mapping[tuple[str, str], str]) -> Sheet:
-    """Every particle of the campaign with its results; remarks by their numbers."""
+    """Particles of the campaign with their results, the first `MOST_LISTED`; remarks by their numbers."""
+    numbers = {flag: k for k, flag in enumerate(_flags(particles), 1)}
+    particles = particles[:MOST_LISTED]
     head = ["Session", "Particle", "Group"]
+    sort: dict[str, list[str]] = {}  # by column: what a reader's browser sorts by, where that is not the text
     cells = [
         [foreign(p["session"], 14) for p in particles],
         [foreign(p["particle"], 12) for p in particles],
@@ -123,10 +200,10 @@ def particle_table(particles: Sequence[Row], group_of: Mapping[tuple[str, str], 
         ("Charge", "charge_e", "e"),
     ):
         value, u = columns_of(particles, key, f"u_{key}")
+        sort[str(len(head))] = [repr(one) if math.isfinite(one) else "" for one in value]
         title, text, _ = quantity_column(name, unit, value, u)
         head.append(title)
         cells.append(text)
-    numbers = {flag: k for k, flag in enumerate(_flags(particles), 1)}
     head.append("State,\nremarks")
     cells.append(
         [
@@ -135,7 +212,8 @@ def particle_table(particles: Sequence[Row], group_of: Mapping[tuple[str, str], 
             for p in particles
         ]
     )  # fmt: skip
-    return sheet(head, cells, "lllrrrrrl", [2, 1, 2, 0, 0, 0, 0, 0, 2])
+    made = sheet(head, cells, "lllrrrrrl", [2, 1, 2, 0, 0, 0, 0, 0, 2])
+    return {**made, "links": {"0": [f"sessions/{p['session']}.pdf" for p in particles]}, "sort": sort}
 
 
 def _flags(particles: Sequence[Row]) -> list[str]:
@@ -191,9 +269,10 @@ def _setting(value: object) -> str:
     return value if isinstance(value, str) else json.dumps(value, ensure_ascii=False)
 
 
-def settings_table(settings: Row) -> Sheet:
-    """Settings of the campaign that change numbers."""
+def settings_table(settings: Row, *, title: str = "") -> Sheet:
+    """Settings of the campaign that change numbers, and its title where no heading has it whole."""
     shown = {key: value for key, value in sorted(settings.items()) if key != "title"}
+    shown |= {"title": title} if title else {}
     texts = [_setting(value) for value in shown.values()]
     return sheet(["Setting", "Value"], [[foreign(k.replace("_", " ")) for k in shown], [foreign(t) for t in texts]],
                  "ll", [1, 2])  # fmt: skip

@@ -51,8 +51,9 @@ def _parser() -> argparse.ArgumentParser:
 
     one = command("simulate", _simulate, "write a campaign of known truth, for planning, teaching and tests")
     one.add_argument("campaign", type=Path, help="folder to write; the truth is written beside it")
-    one.add_argument("--plan", default="room_air_light", metavar="NAME", help="what to simulate (room_air_light)")
+    one.add_argument("--plan", metavar="NAME", help="what to simulate (room_air_light)")
     one.add_argument("--plans", action="store_true", help="list the plans there are and end")
+    one.add_argument("--course", action="store_true", help="a course to mark: benches with claims and known mistakes")
     one.add_argument("--materials", metavar="A,B", help="materials the particles are charged with, taken in turn")
     one.add_argument("--sessions", type=int, help="number of sessions")
     one.add_argument("--particles", type=int, help="particles in each session")
@@ -64,6 +65,11 @@ def _parser() -> argparse.ArgumentParser:
     one.add_argument("results", type=Path, help="a results folder")
     one.add_argument("session", help="id of the session")
     one.add_argument("particle", help="id of the particle")
+
+    one = command("trap", _trap, "compute the constants of a trap from the drawing of its electrodes")
+    one.add_argument("trap", type=Path, metavar="FILE", help="trap file with electrodes, as in traps/ of a campaign")
+    one.add_argument("--page", type=Path, metavar="PDF", help="write its page: drawing, field, budget")
+    one.add_argument("--results", type=Path, metavar="DIR", help="results folder that keeps what was computed")
 
     one = command("plan", _plan, "tell how many sessions a difference between two groups takes")
     one.add_argument("results", type=Path, nargs="?", help="a results folder to take spreads from")
@@ -81,9 +87,34 @@ def _parser() -> argparse.ArgumentParser:
     one.add_argument("--trials", type=int, default=2000, help="simulated campaigns for each number tried (2000)")
     one.add_argument("--seed", type=int, default=1, help="same seed, same plan (1)")
 
-    one = command("verify", _verify, "hold one particle's intervals against refits of simulated readings")
-    one.add_argument("campaign", type=Path, help="folder that holds campaign.yaml and sessions/")
-    one.add_argument("--refit", type=_pair, required=True, metavar="SESSION/PARTICLE", help="which particle")
+    one = command("diff", _diff, "tell two results folders apart: what moved, by how many u, and what did it")
+    one.add_argument("a", type=Path, metavar="A", help="a results folder")
+    one.add_argument("b", type=Path, metavar="B", help="another one; moves are in units of u in A")
+    one.add_argument("--all", action="store_true", help="list every number, not the largest moves alone")
+
+    one = command("pack", _pack, "make the bundle to send to a colleague, without marks, register, logs or paths")
+    one.add_argument("results", type=Path, help="a results folder")
+    one.add_argument("archive", type=Path, metavar="OUT.zip", help="archive to write")
+    one.add_argument("--with-campaign", type=Path, metavar="DIR", help="put in the input files of this campaign, too")
+    one.add_argument("--overwrite", action="store_true", help="replace an archive that is there")
+
+    one = command("gradebook", _gradebook, "fill marks into the gradebook that a learning platform exported")
+    one.add_argument("results", type=Path, help="a results folder of a marked campaign")
+    one.add_argument("export", type=Path, metavar="EXPORT.csv", help="the platform's own exported file; only read")
+    one.add_argument("--match", required=True, metavar="COLUMN", help="column of the export that says who a row is")
+    one.add_argument("--by", choices=("id_number", "email", "name"), help="column of the register that is meant")
+    about = "column of the export to fill with the marks, or with another column of the mark sheet"
+    one.add_argument("--fill", required=True, action="append", metavar="COLUMN[=WHAT]", help=about)
+    one.add_argument("--decimal", choices=(".", ","), default=".", help="decimal mark of what is filled in (.)")
+    one.add_argument("--write", type=Path, metavar="OUT", help="file to write; without it the changes are shown only")
+
+    one = command("verify", _verify, "check that results are those of their run, or one particle by refitting")
+    one.add_argument("folder", type=Path, help="a results folder; a campaign with --refit")
+    one.add_argument(
+        "--campaign", type=Path, metavar="DIR", help="check, too, that these are the inputs of the results"
+    )
+    one.add_argument("--refit", type=_pair, metavar="SESSION/PARTICLE",
+                     help="hold this particle's intervals against refits of simulated readings")  # fmt: skip
     one.add_argument("--trials", type=int, default=400, help="sets of simulated readings, 200 or more (400)")
     one.add_argument("--seed", type=int, default=1, help="same seed, same draws (1)")
     return parser
@@ -147,6 +178,9 @@ def _simulate(asked: argparse.Namespace) -> int:
     if asked.plans:
         _say("\n".join(sorted(PLANS)))
         return 0
+    if asked.course:
+        return _simulate_course(asked)
+    asked.plan = asked.plan or "room_air_light"
     if asked.plan not in PLANS:
         message = f"there is no plan {asked.plan}. {nearest(asked.plan, PLANS)}"
         raise ReductionError(message)
@@ -170,10 +204,38 @@ def _simulate(asked: argparse.Namespace) -> int:
     return 0
 
 
+def _simulate_course(asked: argparse.Namespace) -> int:
+    from reduction.simulationcourse import mistake_of, simulate_course
+
+    given = [
+        f"--{name.replace('_', '-')}"
+        for name in ("plan", "materials", "outliers", "charge_drift")
+        if getattr(asked, name) is not None
+    ]
+    if given:
+        message = f"found --course with {' and '.join(given)}; a course has a plan of its own. Give one or the other."
+        raise ReductionError(message)
+    mistakes = [mistake_of(number) for number in range(12 if asked.sessions is None else asked.sessions)]
+    particles = 5 if asked.particles is None else asked.particles
+    truth = simulate_course(asked.campaign, mistakes=mistakes, seed=asked.seed, particles=particles)
+    _say(
+        f"{asked.campaign} is there, a course of invented data of seed {asked.seed}; mistakes planted and the marks "
+        f"that are fair stand in {truth}"
+    )
+    return 0
+
+
 def _explain(asked: argparse.Namespace) -> int:
     from reduction.explain import explain
 
     _say(explain(asked.results, asked.session, asked.particle))
+    return 0
+
+
+def _trap(asked: argparse.Namespace) -> int:
+    from reduction.trapcommand import trap_text
+
+    _say(f"{trap_text(asked.trap, page=asked.page, results=asked.results)}\n{CAUTION}")
     return 0
 
 
@@ -200,11 +262,51 @@ def _plan(asked: argparse.Namespace) -> int:
     return 0
 
 
+def _diff(asked: argparse.Namespace) -> int:
+    from reduction.diffwords import difference_text
+    from reduction.resultsdiff import difference
+
+    try:
+        found = difference(asked.a, asked.b)
+    except ReductionError as error:
+        sys.stderr.write(f"{error}\n")
+        return 2  # as 1 says that there is a difference
+    _say(difference_text(found, asked.a, asked.b, everything=asked.all))
+    return 1 if found else 0
+
+
+def _pack(asked: argparse.Namespace) -> int:
+    from reduction.bundle import pack
+
+    _say(pack(asked.results, asked.archive, campaign=asked.with_campaign, overwrite=asked.overwrite))
+    return 0
+
+
+def _gradebook(asked: argparse.Namespace) -> int:
+    from reduction.gradebook import fill, filled_text, fills_of, write_filled
+
+    how = {"match": asked.match, "by": asked.by, "decimal": asked.decimal}
+    found = fill(asked.results, asked.export, fills=fills_of(asked.fill), **how)
+    if asked.write is not None:
+        write_filled(found, asked.export, asked.write)
+    _say(filled_text(found, None if asked.write is None else str(asked.write)))
+    return 0
+
+
 def _verify(asked: argparse.Namespace) -> int:
+    if asked.refit is None:
+        from reduction.checksums import verification
+
+        text, good = verification(asked.folder, asked.campaign)
+        _say(text)
+        return 0 if good else 3
+    if asked.campaign is not None:
+        message = "--campaign goes with a results folder; with --refit the folder itself is the campaign"
+        raise ReductionError(message)
     from reduction.validation import refit, report_text
 
     session, particle = asked.refit
-    found = refit(asked.campaign, session, particle, asked.trials, asked.seed)
+    found = refit(asked.folder, session, particle, asked.trials, asked.seed)
     _say(report_text(found))
     return 3 if any(one.comparison.verdict == "fails" for one in found) else 0
 
@@ -216,7 +318,8 @@ def main(argv: Sequence[str] | None = None) -> int:
     -------
     int
         0 where it did what was asked, 1 where it could not, 2 where it was not asked rightly, 3 where what was verified
-        does not hold, 130 where interrupted.
+        does not hold, 130 where interrupted; of `diff` 0 where there is no difference, 1 where there is one, 2 where it
+        could not tell.
     """
     parser = _parser()
     asked = parser.parse_args(argv)

@@ -286,7 +286,7 @@ def session_rows(found: Comparison) -> Iterator[dict[str, Any]]:
                 "session_order": found.values["session_order"].get(session, math.nan),
                 "particles": int(cells.count[at]),
                 "mean": float(cells.mean[at]),
-                "u_measurement": math.sqrt(float(cells.own[at] + (cells.shared[at] ** 2).sum())),
+                "u_measurement": math.sqrt(float(cells.own[at] + cells.shared_variance[at])),
                 "u_particles": math.sqrt(float(sampling[index])) if sampling is not None else math.nan,
                 "relative_humidity_percent": found.values["relative_humidity"].get(session, math.nan),
                 "temperature_degC": found.values["temperature"].get(session, math.nan),

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import unicodedata
 from collections.abc import Mapping, Sequence
 from typing import Any
 
@@ -27,6 +28,7 @@ from reduction.figurestyle import (
     svg,
 )
 from reduction.panels import column, heading, number
+from reduction.wording import counted
 
 Row = Mapping[str, Any]
 _ROWS_MOST = 44  # session rows that fit one figure; beyond, a group is one row
@@ -34,6 +36,7 @@ _TALLEST = 180.0  # what fits a page below its words [mm]
 _LABEL = 34.0  # room for labels on the left [mm]
 DIFFERENCES_MOST = 36  # pairs that fit one figure; the table has them all
 _PRINTED_MOST = 24  # groups whose chances are printed in the matrix
+_MEANS_MOST = 10  # groups that fit the first page as a figure
 _NAMED_MOST = 10  # groups that a key names
 
 
@@ -70,7 +73,7 @@ def by_group(
             twin.append((name, "", "", "group_mean", *(factor * float(group[key])
                          for key in ("mean", "u_mean", "low", "high")), unit))  # fmt: skip
             axes.text(-0.012, at, shortened(name, 20), transform=across, ha="right", va="center", fontsize=8,
-                      color=colour, weight="bold")  # fmt: skip
+                      weight="bold")  # fmt: skip
             continue
         chosen = [row for row in particles if row["group"] == name and session in ("", row["session"])]
         value, u = factor * column(chosen, "value"), factor * column(chosen, "u")
@@ -99,6 +102,43 @@ def by_group(
     alt = f"{title} in {unit} of {len(particles)} particles by group. {said}"
     columns = ("group", "session", "particle", "kind", "value", "u", "low", "high", "unit")
     return Drawing(svg(figure), alt, columns, twin)
+
+
+def means(title: str, unit: str, factor: float, groups: Sequence[Row]) -> Drawing | None:
+    """Mean of session means of each group with its interval, small enough for the first page.
+
+    Parameters
+    ----------
+    title, unit : str
+        What the horizontal axis shows; values are multiplied by `factor` into `unit`.
+    groups : sequence of mappings
+        Rows of comparison.csv with an interval, in the order to be drawn.
+    """
+    if not 2 <= len(groups) <= _MEANS_MOST:
+        return None
+    lane = 5.0
+    figure = canvas(WIDTH, 10.0 + lane * len(groups))
+    axes: Any = place(figure, _LABEL, 9.5, WIDTH - _LABEL - 32, lane * len(groups))
+    mean, low, high = (factor * column(groups, name) for name in ("mean", "low", "high"))
+    half = 3.0 * float(np.median(high - low))
+    axes.set_xlim(*limits(mean, np.maximum(low, mean - half), np.minimum(high, mean + half), margin=0.05, include=0.0))
+    axes.axvline(0.0, color=SOFT, linewidth=0.6, zorder=0.5)
+    across = axes.get_yaxis_transform()
+    for at, group in enumerate(groups):
+        axes.axhline(at, color=HAIR, linewidth=0.4, zorder=0)
+        _interval(axes, at, low[at], high[at], 1.8)
+        axes.text(-0.012, at, shortened(str(group["group"]), 26), transform=across, ha="right", va="center",
+                  fontsize=8.5)  # fmt: skip
+        counts = f"{counted(int(group['particles']), 'particle')} in {counted(int(group['sessions']), 'session')}"
+        axes.text(1.015, at, counts, transform=across, va="center", fontsize=7.5, color=SOFT)
+    points(axes, mean, np.arange(len(groups), dtype=float), INK, "D", size=4.6)
+    axes.set_ylim(len(groups) - 0.5, -0.5)
+    axes.set_yticks([])
+    axes.spines["left"].set_visible(False)
+    axes.locator_params(axis="x", nbins=7)
+    axes.set_xlabel(f"{title} / {unit}")
+    alt = f"Means of session means of {title} in {unit}. " + " ".join(_said(group, factor) for group in groups)
+    return Drawing(svg(figure), alt)
 
 
 def _lanes(groups: Sequence[Row], sessions: Sequence[Row]) -> list[tuple[Row, str | None]]:
@@ -144,11 +184,28 @@ def _offsets(count: int, steps: int) -> Array:
 
 
 def shortened(text: str, most: int) -> str:
-    """Text of so many characters at most, cut in its middle: names that begin alike often differ at their ends."""
-    if len(text) <= most:
+    """Text as long as so many small letters at most, cut in its middle: names often differ at their ends."""
+    if sum(map(_breadth, text)) <= most:
         return text
-    tail = (most - 1) // 2
-    return f"{text[: most - 1 - tail]}\N{HORIZONTAL ELLIPSIS}{text[-tail:]}"
+    head, tail = _taken(text, most - 1 - (most - 1) // 2), _taken(text[::-1], (most - 1) // 2)
+    return f"{text[:head]}\N{HORIZONTAL ELLIPSIS}{text[len(text) - tail :]}"
+
+
+def _taken(text: str, room: float) -> int:
+    """How many characters from the start of a text fit."""
+    for count, letter in enumerate(text):
+        room -= _breadth(letter)
+        if room < 0:
+            return count
+    return len(text)
+
+
+def _breadth(letter: str) -> float:
+    """About how broad a letter is, in small letters: capitals are broader, letters of far scripts fill a square."""
+    kind = unicodedata.category(letter)
+    if kind in ("Lo", "So") and unicodedata.bidirectional(letter) not in ("R", "AL"):
+        return 2.4
+    return {"Lu": 1.6, "Mn": 0.0, "Me": 0.0}.get(kind, 1.0) + 0.4 * (letter in "MW")
 
 
 def _horizontal(axes: Any, pooled: Sequence[Array], ends: Sequence[float]) -> str:
@@ -261,7 +318,7 @@ def ranks(groups: Sequence[Row]) -> Drawing | None:
 
 
 def _cell(axes: Any, x: float, y: float, share: float) -> None:
-    shade = tuple(1.0 - share * (1.0 - int(COLOURS[0][k : k + 2], 16) / 255.0) for k in (1, 3, 5))
+    shade = (*(int(COLOURS[0][k : k + 2], 16) / 255.0 for k in (1, 3, 5)), share)  # the page's ground shows through
     across, up = (x - 0.5, x + 0.5, x + 0.5, x - 0.5), (y - 0.5, y - 0.5, y + 0.5, y + 0.5)
     axes.fill(across, up, facecolor=shade, edgecolor=HAIR, linewidth=0.4)
 

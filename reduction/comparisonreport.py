@@ -10,7 +10,7 @@ from reduction import chargefigures, comparisonfigures, comparisonsheets, figure
 from reduction.comparisonpages import Pages, Row, step_of, surest
 from reduction.comparisontables import WORDS
 from reduction.sessionmeans import QUANTITIES, Facts, group_word, why_not
-from reduction.typeset import MINUS, foreign, times, visible
+from reduction.typeset import MINUS, chance, foreign, times, visible
 from reduction.wording import counted, joined
 
 BY_WORDS = {"charged_with": "what the particles were charged with"}
@@ -57,7 +57,8 @@ def _advice(pages: Pages) -> list[str]:
 
 
 def worded(text: str) -> str:
-    """A sentence with its numbers as they are set on a page: a true minus, powers of ten."""
+    """A sentence with its numbers as they are set on a page: a true minus, powers of ten, no p below a millionth."""
+    text = re.sub(r"\bp = ([\d.]+e-\d+)", lambda m: f"p {chance(float(m[1]))}" if float(m[1]) < 1e-6 else m[0], text)
     raised = re.sub(r"(?<![\w.])(-?[\d.]+(?:\(\d+\))?)e([+-]?\d+)\b", lambda m: times(m[1], int(m[2])), text)
     return re.sub(r"(?<![\w.\)-])-(?=\d)", MINUS, raised)
 
@@ -102,6 +103,7 @@ def drawings(pages: Pages, particles: Sequence[Row], facts: Facts) -> dict[str, 
     pairs = surest([row for row in pages.pairs if math.isfinite(row["p"])], comparisonfigures.DIFFERENCES_MOST)
     found = [{**row, "step": step_of(row)} for row in pages.rows["trends"]]
     made = {
+        "means": comparisonfigures.means(pages.name, unit, factor, tested),
         "comparison": comparisonfigures.by_group(pages.name, unit, factor, pages.groups, sessions, compared),
         "differences": comparisonfigures.differences(pages.name, unit, factor, pairs),
         "ranks": comparisonfigures.ranks(tested),

@@ -4,11 +4,13 @@ from __future__ import annotations
 
 import math
 
+from reduction.campaigntables import SCOPES
 from reduction.comparisonpages import Pages, Row, step_of, surest
 from reduction.sheets import Sheet, sheet
 from reduction.typeset import (
     NONE,
     bracketed,
+    chance,
     common_power,
     foreign,
     interval,
@@ -21,14 +23,8 @@ from reduction.wording import input_words
 
 PAIRS_MOST = 60  # differences printed
 _SHORT = {"charge_to_mass": "q/m", "charge": "Charge", "surface_charge_density": "Surface charge\ndensity"}
-_SCOPES = {
-    "between_sessions": "Between\nsessions",
-    "between_particles": "Between\nparticles",
-    "session": "Session\ninputs",
-    "trap": "Trap",
-    "species": "Species",
-    "instrument": "Instru-\nments",
-    "campaign": "Formulas",
+_SCOPES = {"between_sessions": "Between\nsessions", "between_particles": "Between\nparticles"} | {
+    scope: SCOPES[scope] for scope in ("session", "trap", "species", "instrument", "campaign")
 }
 
 
@@ -49,7 +45,7 @@ def answer_table(pages: Pages) -> Sheet:
     if best:
         head += [f"{best}\n%", "Rank"]
         cells += [[_percent(row["rank_1"]) for row in groups], [_rank(row) for row in groups]]
-    return sheet(head, cells, "lrrrlrr"[: len(head)], [5, 2, 2, 3, 4, 2, 2][: len(head)])
+    return sheet(head, cells, "lrrrrrr"[: len(head)], [5, 2, 2, 3, 4, 2, 2][: len(head)])
 
 
 def _ends(row: Row, power: int) -> str:
@@ -90,8 +86,8 @@ def pair_table(pages: Pages) -> Sheet | None:
                 for row in pairs
             ],
             [interval(row["low"], row["high"], row["u_difference"], power) for row in pairs],
-            [significant(row["p"], 2) for row in pairs],
-            [significant(row["p_holm"], 2) if math.isfinite(row["p"]) else "not tested" for row in pairs],
+            [chance(row["p"]) for row in pairs],
+            [chance(row["p_holm"]) if math.isfinite(row["p"]) else "not tested" for row in pairs],
             [_ratio(row) for row in pairs],
             [significant(row["effect_size"], 2) for row in pairs],
         ],
@@ -121,8 +117,8 @@ def trend_table(pages: Pages) -> Sheet | None:
             [bracketed(row["slope"], row["u_slope"], power) for row in rows],
             [step_of(row) for row in rows],
             [interval(row["low"], row["high"], row["u_slope"], power) for row in rows],
-            [significant(row["p"], 2) for row in rows],
-            [significant(row["p_holm"], 2) for row in rows],
+            [chance(row["p"]) for row in rows],
+            [chance(row["p_holm"]) for row in rows],
             [f"{row['sessions']:.0f}" for row in rows],
             [percent(row["share_between_groups"]) for row in rows],
             [row["note"] or "" for row in rows],

@@ -12,7 +12,7 @@ from reduction import comparison, groupbudget, histogram
 from reduction.comparison import Comparison, compare
 from reduction.comparisonwords import charge_statements, summary
 from reduction.histogram import distributions
-from reduction.sessionmeans import Facts
+from reduction.sessionmeans import QUANTITIES, Facts
 from reduction.tables import read_table, write_table
 from reduction.wholefile import write_json
 
@@ -22,6 +22,7 @@ TABLES = (
 )  # fmt: skip
 """Tables of a comparison, each a CSV file of that name."""
 
+_ROWS_AT_ONCE = 100_000  # of a table that may have millions
 WORDS = "comparison.json"  # statements in plain words, and what they rest on
 
 
@@ -59,15 +60,21 @@ def compared(
 def evaluations(results: Path) -> dict[str, str]:
     """Type A or B of every input that budget.csv names."""
     columns = ["input", "evaluation"]
-    known = pd.read_csv(results / "budget.csv", usecols=columns, dtype=str, keep_default_na=False).drop_duplicates()
-    return dict(zip(known["input"], known["evaluation"], strict=True))
+    known: dict[str, str] = {}
+    parts = pd.read_csv(
+        results / "budget.csv", usecols=columns, dtype=str, keep_default_na=False, chunksize=_ROWS_AT_ONCE
+    )
+    for part in parts:
+        first = part.drop_duplicates()
+        known.update(zip(first["input"], first["evaluation"], strict=True))
+    return known
 
 
 def write_comparison(results: Path, facts: Facts, settings: Mapping[str, Any]) -> Comparison:
     """Compare the groups of a results folder and write every file of the comparison there; see `compared`."""
-    particles, components, inputs = (
-        read_table(results / f"{name}.csv") for name in ("particles", "components", "inputs")
-    )
+    particles, inputs = (read_table(results / f"{name}.csv") for name in ("particles", "inputs"))
+    needed = {QUANTITIES[name].result for name in ("charge", str(settings["compare"]["quantity"]))}
+    components = read_table(results / "components.csv", only={"result": needed})
     found = compared(particles, components, facts, settings)
     charges = distributions(
         particles, components, inputs, facts, by=found.by, coverage=found.coverage, seed=int(settings["seed"])

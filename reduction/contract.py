@@ -19,7 +19,9 @@ class Key:
     """One key of a YAML file."""
 
     name: str  # with its customary unit
-    kind: str  # quantity, number, integer, text, id, date, word, reason, sessions, mapping, texts, names
+    # quantity, number, integer, text, id, date, word, reason, sessions, mapping, texts, names, pair, word_pair,
+    # dimensions, conductors
+    kind: str
     about: str
     required: bool = False
     of: str = ""  # row of units.QUANTITIES that gives unit and range
@@ -27,6 +29,7 @@ class Key:
     keys: tuple[Key, ...] = ()  # of a mapping
     bounds: tuple[float, float] = (0.0, 0.0)  # of an integer or number without a row in QUANTITIES
     default: str = ""  # of a campaign option that is no word
+    instead: str = ""  # key that may stand in place of this one, never beside it
 
     @property
     def stem(self) -> str:
@@ -34,8 +37,8 @@ class Key:
         return split_name(self.name)[0] if self.of else self.name
 
 
-def _quantity(name: str, of: str, about: str, required: bool = False) -> Key:
-    return Key(name, "quantity", about, required, of)
+def _quantity(name: str, of: str, about: str, required: bool = False, instead: str = "") -> Key:
+    return Key(name, "quantity", about, required, of, instead=instead)
 
 
 AIR = (
@@ -106,12 +109,33 @@ SESSION = (
     Key("exclude", "reason", "Reason to leave the session out of all results; leave the key out to keep it."),
     Key("notes", "text", "Anything worth keeping."),
 )
+ELECTRODES = (
+    Key("dc_applied", "word", "How dc is applied: half on each plate, or all on one with the other grounded.",
+        words=("both_plates", "one_plate")),
+    Key("departure", "word", "What the field's departure from the linear one does: a component of the uncertainty of "
+        "each height, or a correction of it.", words=("component", "corrected")),
+    Key("dimensions_mm", "dimensions", "Names of your own, each with its length or place and uncertainty in mm."),
+    Key("conductors", "conductors", "Names of your own, each with what it carries and its outline in (r, z), mm."),
+)  # fmt: skip
 TRAP = (
-    _quantity("dc_field_per_volt_per_m", "dc_field_per_volt", "Axial field at the centre per volt dc.", True),
+    _quantity(
+        "dc_field_per_volt_per_m",
+        "dc_field_per_volt",
+        "Axial field at the centre per volt dc.",
+        True,
+        instead="electrodes",
+    ),
     _quantity(
         "ac_gradient_per_volt_per_m2",
         "ac_gradient_per_volt",
         "Axial field gradient at the centre per volt of drive amplitude; needed with height.csv and secular.csv.",
+        instead="electrodes",
+    ),
+    Key(
+        "electrodes",
+        "mapping",
+        "Drawing of the electrodes, in place of the two constants, which are then computed.",
+        keys=ELECTRODES,
     ),
     _quantity("stray_field_V_per_m", "stray_field", "Vertical stray field, drawn anew each session.", True),
     Key("dc_polarity", "word", "1 if a positive reading makes an upward field, else -1.", True, words=("1", "-1")),
@@ -243,3 +267,26 @@ LOGS: dict[str, tuple[Column, ...]] = {
 }
 READING_LOGS = ("balance", "secular", "height")
 """The logs a method reads."""
+MARKING: dict[str, tuple[Column, ...]] = {
+    "claims": (
+        Column("session", "id", required=True),  # may be left out in a session's own folder
+        Column("particle", "id", required=True),
+        Column("quantity", "text", required=True),
+        Column("value", "text", required=True),  # kept as written too: its digits are judged
+        Column("unit", "text", required=True),
+        Column("expanded_uncertainty", "text", required=True),
+        Column("coverage_factor", "text", required=True),
+    ),
+    "register": (
+        Column("session", "id", required=True),
+        Column("name", "text", required=True),
+        Column("email", "text"),
+        Column("id_number", "text"),
+        Column("pseudonym", "text"),
+    ),
+    "overrides": tuple(
+        Column(name, "id" if name == "session" else "text", required=True)
+        for name in ("session", "criterion", "marks", "reason", "by")
+    ),
+}
+"""The tables of a marked campaign."""

@@ -14,6 +14,8 @@ from reduction.textfile import read_text
 SIZE_LIMIT = 200_000_000  # [bytes]
 ROW_LIMIT = 5_000_000
 _SEPARATORS = {",": "comma", ";": "semicolon", "\t": "tab"}
+COLUMN_LIMIT = 1000
+_HEAD_LIMIT = 200  # characters of one column name
 _FAULTS_SHOWN = 10
 
 
@@ -35,12 +37,17 @@ class Sheet:
 
 
 class _Lines:
-    """Lines for `csv.reader`, with blank and comment lines left out between rows but not within quotes."""
+    """Lines for `csv.reader`, with blank and comment lines left out between rows but not within quotes.
+
+    A spreadsheet puts a comment in quotes. Above the head such a line is taken for one; below it the first cell of a
+    reading may look like that, and `_rows` looks at the other cells.
+    """
 
     def __init__(self, lines: list[str], start: int) -> None:
         self._lines = lines
         self.at = start  # index of the next line
         self.row_starts = True
+        self.in_body = False
         self.first = start
 
     def __iter__(self) -> Iterator[str]:
@@ -50,7 +57,7 @@ class _Lines:
             self.at += 1
             if self.row_starts:
                 head = line.lstrip()
-                if not head or head[0] == "#" or head.startswith('"#'):
+                if not head or head[0] == "#" or (head.startswith('"#') and not self.in_body):
                     continue
                 self.first = self.at
                 self.row_starts = False
@@ -82,6 +89,10 @@ def read_sheet(path: Path, name: str, *, faults: Faults, knows: Callable[[str], 
     first = next(iter(lines), None)
     if first is None:
         faults.add(name, found="no line", expected="a line of column names", advice="Write the names of the columns.")
+        return None
+    if len(first) > COLUMN_LIMIT * _HEAD_LIMIT:
+        found, expected = f"a line of {len(first):,} characters", "a line of column names"
+        faults.add(name, line=lines.first, found=found, expected=expected, advice="Write the names of the columns.")
         return None
     if stated is not None and stated not in _SEPARATORS:
         expected = "sep=, or sep=; or a tab"
@@ -132,6 +143,11 @@ def _rows(name: str, lines: _Lines, separator: str, encoding: str, faults: Fault
                 while heads and not heads[-1]:
                     heads.pop()
                 width = len(heads)
+                if not _fit_heads(name, heads, head_line, faults):
+                    return None
+                lines.in_body = True
+                continue
+            if row[0].startswith("#") and not any(map(str.strip, row[1:])):
                 continue
             if len(row) != width:
                 while len(row) > width and not row[-1].strip():
@@ -143,10 +159,12 @@ def _rows(name: str, lines: _Lines, separator: str, encoding: str, faults: Fault
             rows.append(row)
             numbers.append(lines.first)
     except csv.Error as error:
-        advice = 'Close each quotation mark, and write a mark within quotes twice: "".'
-        faults.add(
-            name, line=lines.first, found=f"quotes that do not match ({error})", expected="fields", advice=advice
-        )
+        if "field limit" in str(error):
+            found, advice = f"a cell of more than {csv.field_size_limit():,} characters", "Close the quotation marks."
+        else:
+            found = f"quotes that do not match ({error})"
+            advice = 'Close each quotation mark, and write a mark within quotes twice: "".'
+        faults.add(name, line=lines.first, found=found, expected="fields", advice=advice)
         return None
     if not heads:
         faults.add(name, line=head_line, found="no column names", expected="a line of column names")
@@ -159,6 +177,19 @@ def _rows(name: str, lines: _Lines, separator: str, encoding: str, faults: Fault
         columns = [tuple(cell for cell, kept in zip(column, keep, strict=True) if kept) for column in columns]
         numbers = [number for number, kept in zip(numbers, keep, strict=True) if kept]
     return Sheet(name, heads, columns, head_line, numbers, separator, encoding)
+
+
+def _fit_heads(name: str, heads: list[str], line: int, faults: Faults) -> bool:
+    """Whether a head has no more, and no longer, names than a log can have; each is compared with many others."""
+    if len(heads) > COLUMN_LIMIT:
+        faults.add(name, line=line, found=f"{len(heads):,} columns", expected=f"at most {COLUMN_LIMIT:,}")
+        return False
+    longest = max(map(len, heads), default=0)
+    if longest > _HEAD_LIMIT:
+        found, expected = f"a column name of {longest:,} characters", f"at most {_HEAD_LIMIT}"
+        faults.add(name, line=line, found=found, expected=expected, advice="The first line names the columns.")
+        return False
+    return True
 
 
 def _report_widths(name: str, wrong: list[tuple[int, int]], width: int, separator: str, faults: Faults) -> None:

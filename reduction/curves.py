@@ -8,10 +8,11 @@ import numpy as np
 
 from reduction import motion
 from reduction.adjustment import Adjusted
-from reduction.methods import Array, Readings, particle_properties, predict, scaled_motion, surroundings
+from reduction.methods import Array, Readings, particle_properties, predict, scaled_motion, surroundings, with_departure
 from reduction.preparation import Prepared
 
 POINTS = 49  # of a secular curve
+BENT = 25  # of heights in a field that is not linear
 
 
 def _readings(amplitude: Array, omega: float, voltage: Array, place: int) -> Readings:
@@ -27,6 +28,7 @@ def _readings(amplitude: Array, omega: float, voltage: Array, place: int) -> Rea
         empty,
         np.zeros(len(amplitude), bool),
         np.zeros(len(amplitude), np.intp),
+        empty,
         empty,
     )
 
@@ -51,11 +53,13 @@ def _height_lines(adjusted: Adjusted, readings: Readings, place: int) -> list[di
     lines = []
     span = readings.voltage.min(), readings.voltage.max()
     margin = 0.05 * (span[1] - span[0])
-    voltage = np.array([span[0] - margin, span[1] + margin])
+    straight = adjusted.model.setting.field_map is None
+    voltage = np.linspace(span[0] - margin, span[1] + margin, 2 if straight else BENT)
     for amplitude, omega in sorted(
         {(float(a), float(o)) for a, o in zip(readings.amplitude, readings.omega, strict=True)}
     ):
-        log = _readings(np.full(2, amplitude), omega, voltage, place)
+        log = _readings(np.full(len(voltage), amplitude), omega, voltage, place)
+        log = with_departure(adjusted.model.setting, log, adjusted.theta, adjusted.model.sign)
         height = _predicted(adjusted, "height", log)
         lines.append(
             {

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
+import os
 import platform
 import re
 import stat
@@ -16,11 +17,14 @@ from typing import Any
 
 import yaml
 
-from reduction import places
+from reduction import benchrows, places
 
 ID = re.compile(r"[A-Za-z0-9][A-Za-z0-9_-]{0,63}")
 SESSION_FILES = ("session.yaml", "balance.csv", "secular.csv", "height.csv", "particles.csv", "lost.csv")
-LIBRARIES = ("lmfit", "matplotlib", "numpy", "pandas", "scipy", "typst")
+LIBRARIES = (
+    "fonttools", "jinja2", "lmfit", "markupsafe", "matplotlib", "numpy", "pandas", "pyyaml", "scipy", "typst",
+    "uncertainties",
+)  # fmt: skip
 
 LARGEST = 200 * 2**20  # beyond it a file is refused by the check; it is not read here [bytes]
 DEEPEST = 40  # levels of YAML beyond which a file is taken as it is
@@ -33,7 +37,8 @@ def digest(*parts: str | bytes) -> str:
     """SHA-256 of the parts, each told apart from its neighbours, as hexadecimal text."""
     total = hashlib.sha256()
     for part in parts:
-        data = part.encode() if isinstance(part, str) else part
+        # surrogates stand for bytes of a file's name that are no UTF-8
+        data = part.encode(errors="surrogatepass") if isinstance(part, str) else part
         total.update(len(data).to_bytes(8, "big"))
         total.update(data)
     return total.hexdigest()
@@ -90,6 +95,17 @@ def _own_version() -> str:
     return metadata.version("motescale")
 
 
+def lock_digest() -> str:
+    """SHA-256 of the lock the program was released with; "" where it came without one."""
+    return file_digest(places.lock()) if places.lock().is_file() else ""
+
+
+@cache
+def definition_digest() -> str:
+    """Digest of the files that define the workflow."""
+    return digest(*(part for name, path in places.definition() for part in (name, path.read_bytes())))
+
+
 def code_digest() -> str:
     """Digest of the package and of the versions of its libraries."""
     used = {name: version for name, version in versions().items() if name != "motescale"}
@@ -135,6 +151,22 @@ def yaml_strings(data: bytes | None) -> Any:
     return top[0] if top else None
 
 
+def drawing_digest(data: bytes | None) -> str:
+    """Digest of the electrodes in a trap file and of the program; empty where there are none.
+
+    What the constants do not depend on has no part in it; the order of the conductors has.
+    """
+    drawn = _mapping(_mapping(yaml_strings(data)).get("electrodes"))
+    drawn.pop("departure", None)
+    return digest("drawing", json.dumps(drawn), code_digest()) if drawn else ""
+
+
+def drawings(folder: Path) -> dict[str, str]:
+    """Each trap of a campaign whose electrodes are drawn, and the digest of its drawing."""
+    found = {path.stem: drawing_digest(content(path)) for path in sorted((folder / "traps").glob("*.yaml"))}
+    return {name: one for name, one in found.items() if one}
+
+
 def _mapping(value: Any) -> dict[str, Any]:
     return value if isinstance(value, dict) else {}
 
@@ -151,7 +183,8 @@ def session_ids(folder: Path) -> list[str]:
 
 def _session_ids(folder: Path, settings: Mapping[str, Any]) -> list[str]:
     try:
-        found = {path.name for path in (folder / "sessions").iterdir() if path.is_dir() and ID.fullmatch(path.name)}
+        found = {name for name in os.listdir(folder / "sessions") if ID.fullmatch(name)}
+        found = {name for name in found if os.path.isdir(folder / "sessions" / name)}
     except OSError:
         return []
     listed = settings.get("sessions")
@@ -163,13 +196,15 @@ def _session_ids(folder: Path, settings: Mapping[str, Any]) -> list[str]:
 def input_files(folder: Path) -> list[str]:
     """Files of a campaign that are read, relative to it, sorted."""
     settings = campaign_settings(folder)
-    names = ["campaign.yaml"] if (folder / "campaign.yaml").is_file() else []
+    marked = benchrows.is_marked(folder)
+    names = ["campaign.yaml"] if os.path.isfile(folder / "campaign.yaml") else []
+    names += [name for name in benchrows.FILES if marked and os.path.isfile(folder / name)]
     for part in ("traps", "species"):
-        names += [f"{part}/{path.name}" for path in (folder / part).glob("*.yaml") if path.is_file()]
+        names += [f"{part}/{path.name}" for path in (folder / part).glob("*.yaml") if os.path.isfile(path)]
     for session in _session_ids(folder, settings):
-        names += [
-            f"sessions/{session}/{name}" for name in SESSION_FILES if (folder / "sessions" / session / name).is_file()
-        ]
+        own = [f"sessions/{session}/{name}" for name in SESSION_FILES]
+        own += [benchrows.own_claims(session)] if marked else []
+        names += [name for name in own if os.path.isfile(folder / name)]
     return sorted(names)
 
 
@@ -216,3 +251,22 @@ def session_inputs(folder: Path, sessions: Iterable[str]) -> dict[str, str]:
                 parts += ["species", name, data]
         found[session] = digest(*parts)
     return found
+
+
+def mark_inputs(folder: Path, sessions: Mapping[str, str]) -> dict[str, str]:
+    """Digest of what each bench's marks depend on, and of nothing else; empty where the campaign is not marked.
+
+    Its own reduction's inputs, its rows in the tables of marking or the claims in its folder, the scheme.
+
+    Parameters
+    ----------
+    folder : Path
+        The campaign.
+    sessions : mapping
+        Session to the digest of what its reduction depends on.
+    """
+    if not benchrows.is_marked(folder):
+        return {}
+    scheme = content(folder / benchrows.SCHEME) or b""
+    texts = benchrows.bench_texts(folder, sorted(sessions))
+    return {session: digest("marks", own, scheme, texts[session]) for session, own in sorted(sessions.items())}

@@ -18,6 +18,8 @@ from reduction.yamlfile import Node, Scalar, Sequence, plain, shown
 NOT_A_REASON = frozenset(("no", "n", "false", "0", "none", "off", "nan", "-"))
 """Words that people write for "do not exclude", where only a reason to exclude belongs."""
 _TEXT_LIMIT = 10_000
+_LARGEST_U = 1e30  # its square must be a number still, also beside small ones
+_UNKNOWN_SHOWN = 20  # unknown keys of one mapping, each compared with all that are known
 _DATE = re.compile(r"\d{4}-\d{2}-\d{2}(?:[T ]\d{2}:\d{2}(?::\d{2})?(?:Z|[+-]\d{2}:\d{2})?)?", re.ASCII)
 
 
@@ -50,10 +52,14 @@ def read_entries(
     """
     entries: Entries = {}
     stems = {key.stem: key for key in keys}
+    strangers = 0
     for name, node in mapping.entries.items():
         line, column = mapping.lines[name], shown_above + name
         key, unit = _known(name, stems)
         if key is None:
+            strangers += 1
+            if strangers > _UNKNOWN_SHOWN:
+                continue
             found, expected, advice = _unknown(name, keys)
             faults.add(path, line=line, column=column, found=found, expected=expected, advice=advice)
             for spoilt in stems:
@@ -85,6 +91,9 @@ def read_entries(
             faults.add(path, line=line, column=column, found=bad.found, expected=bad.expected, advice=bad.advice)
             value = None
         entries[stem] = Entry(value, path, line)
+    if strangers > _UNKNOWN_SHOWN:
+        found = f"{strangers - _UNKNOWN_SHOWN} more unknown keys"
+        faults.add(path, line=mapping.line, column=shown_above.rstrip("."), found=found, expected="keys of this file")
     return entries
 
 
@@ -107,7 +116,12 @@ def require(
         stem, column = above + key.stem, shown + key.name
         if key.kind == "mapping" and (stem not in entries or entries[stem].value is not None):
             require(entries, key.keys, path, faults=faults, advice=advice, above=f"{stem}.", shown=f"{column}.")
-        elif key.required and key.kind != "mapping" and (stem not in entries or entries[stem].value is BLANK):
+        elif (
+            key.required
+            and key.kind != "mapping"
+            and value_of(entries, key.instead, BLANK) is BLANK
+            and (stem not in entries or entries[stem].value is BLANK)
+        ):
             place = entries.get(stem) or entries.get(above[:-1])
             line = place.line if place and place.path == path else 0
             faults.add(
@@ -229,6 +243,8 @@ def _read_quantity(node: Node, key: Key, unit: str) -> object:
     kind = QUANTITIES[key.of]
     if not kind.contains(quantity.estimate):
         raise _Bad(f"{_estimate(node)}, out of range", range_text(kind, unit))
+    if quantity.u > _LARGEST_U:
+        raise _Bad(f"the uncertainty {quantity.u:g}", f"at most {_LARGEST_U:g} in SI", "Correct its power of ten.")
     return quantity
 
 
@@ -265,10 +281,45 @@ def _read_sessions(node: Node, key: Key, unit: str) -> tuple[str, ...]:
     names = [item.text if isinstance(item, Scalar) else shown(item) for item in node.items]
     if not names:
         raise _Bad("an empty list", "all, or a list of sessions", "Write all.")
+    seen: set[str] = set()
     for name in names:
-        if names.count(name) > 1:
+        if name in seen:
             raise _Bad(f"{name} twice", "each session once")
+        seen.add(name)
     return tuple(names)
+
+
+def _read_node(node: Node, key: Key, unit: str) -> Node:
+    """A mapping of the user's own words, read by who knows what they stand for."""
+    if not isinstance(node, YamlMapping):
+        raise _Bad(shown(node), "lines of the form name: ...")
+    return node
+
+
+def _read_pair(node: Node, key: Key, unit: str) -> tuple[float, float]:
+    """Two numbers within the bounds, the first the smaller."""
+    low, high = key.bounds
+    expected = f"two numbers such as [0.5, 2], the first the smaller, above {low:g} and below {high:g}"
+    texts = [plain(item) for item in node.items] if isinstance(node, Sequence) else []
+    try:
+        numbers = [read_number(text) for text in texts]
+    except QuantityError as error:
+        raise _Bad(error.found, expected, error.advice) from None
+    if len(numbers) != 2 or not low < numbers[0] < numbers[1] < high:
+        raise _Bad(", ".join(map(str, texts)) or shown(node), expected)
+    return numbers[0], numbers[1]
+
+
+def _read_word_pair(node: Node, key: Key, unit: str) -> tuple[str, str]:
+    """Two different words of those allowed."""
+    expected = f"two of {', '.join(key.words)}, as in [{', '.join(key.words[:2])}]"
+    words = [item.text if isinstance(item, Scalar) else "" for item in node.items] if isinstance(node, Sequence) else []
+    for word in words:
+        if word not in key.words:
+            raise _Bad(word or shown(node), expected, nearest(word, key.words))
+    if len(words) != 2 or words[0] == words[1]:
+        raise _Bad(", ".join(words) or shown(node), expected)
+    return words[0], words[1]
 
 
 def _one_sentence(about: str) -> str:
@@ -287,4 +338,8 @@ _READERS: dict[str, Callable[[Node, Key, str], object]] = {
     "texts": _read_texts,
     "names": _read_names,
     "sessions": _read_sessions,
+    "dimensions": _read_node,
+    "conductors": _read_node,
+    "pair": _read_pair,
+    "word_pair": _read_word_pair,
 }

@@ -6,10 +6,19 @@ import difflib
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 
+_FOUND_LIMIT = 300  # characters
+
+
+def printable(text: str) -> str:
+    r"""Text from outside, fit for a terminal and any encoding: what cannot be seen is spelled out, as in `\\x1b`."""
+    if text.isprintable():
+        return text
+    return "".join(one if one.isprintable() else one.encode("unicode_escape").decode() for one in text)
+
 
 @dataclass(frozen=True, order=True)
 class Fault:
-    """One thing wrong with what the user brought."""
+    """One thing wrong with what the user brought; texts that stem from it are made printable."""
 
     path: str  # file, relative to the campaign folder, with forward slashes
     line: int = 0  # line in the file, 0 where none applies
@@ -17,6 +26,12 @@ class Fault:
     found: str = ""  # what stands there
     expected: str = ""  # what should
     advice: str = ""  # what to do
+
+    def __post_init__(self) -> None:
+        for name in ("path", "column", "found", "expected", "advice"):
+            object.__setattr__(self, name, printable(getattr(self, name)))
+        if len(self.found) > _FOUND_LIMIT:
+            object.__setattr__(self, "found", self.found[: _FOUND_LIMIT - 3] + "...")
 
     def __str__(self) -> str:
         where = self.path + (f" line {self.line}" if self.line else "") + (f", {self.column}" if self.column else "")

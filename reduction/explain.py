@@ -109,6 +109,11 @@ def _inputs(found: Findings) -> list[str]:
             if math.isfinite(one.get("pull", math.nan)) and abs(one["pull"]) > 2.0:
                 text += f", pull {one['pull']:+.1f}"
         lines.append(text)
+    for key, one in sorted(found.facts.get("trap_constants", {}).items()):
+        text = f"{key} = {one['estimate']:.6g}"
+        if "adjusted" in one:
+            text += f", adjusted {one['adjusted']:.6g}"
+        lines += wrapped(f"{text}, from the drawing of the electrodes: D0 exp(sum S_k (x_k - x0_k)), A likewise", "  ")
     return lines
 
 

@@ -30,7 +30,7 @@ HAIR = "#c4cad1"
 BAND = "#e8ecf0"
 # Okabe and Ito's colours for all kinds of colour vision, ordered so that neighbours differ in lightness too; the
 # marker and the dash say the same thing again in grey.
-COLOURS = ("#0072B2", "#D55E00", "#009E73", "#CC79A7", "#56B4E9", "#E69F00", "#000000")
+COLOURS = ("#0072B2", "#D55E00", "#009E73", "#CC79A7", "#56B4E9", "#000000", "#E69F00")
 MARKERS = ("o", "s", "^", "D", "v", "P", "X")
 Dash = str | tuple[int, tuple[float, ...]]
 DASHES: tuple[Dash, ...] = (
@@ -130,16 +130,16 @@ def series(index: int) -> tuple[str, str, Dash]:
     return COLOURS[k], MARKERS[k], DASHES[k]
 
 
-def bars(axes: Axes, x: Array, y: Array, u: Array, colour: str, *, across: bool = False) -> None:
+def bars(axes: Axes, x: Array, y: Array, u: Array, colour: str, *, across: bool = False, width: float = 0.8) -> None:
     """Standard uncertainty as a plain bar either side of each point, where one is known."""
     known = np.isfinite(x) & np.isfinite(y) & np.isfinite(u)
     x, y, u = x[known], y[known], u[known]
     if not x.size:
         return
     if across:
-        axes.hlines(y, x - u, x + u, colors=colour, linewidth=0.8)
+        axes.hlines(y, x - u, x + u, colors=colour, linewidth=width)
     else:
-        axes.vlines(x, y - u, y + u, colors=colour, linewidth=0.8)
+        axes.vlines(x, y - u, y + u, colors=colour, linewidth=width)
 
 
 def points(

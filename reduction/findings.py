@@ -32,13 +32,15 @@ class Findings:
     readings: pd.DataFrame
     inputs: pd.DataFrame  # of the session, and of this particle's species only
     facts: Mapping[str, Any]  # session.json
+    stated: bool = False  # every input at its estimate
     trials: int = 0  # Monte Carlo draws, 0 where the folder does not say
 
     def value(self, key: str) -> float:
         """Value used for the input `key`, in the unit of the key: the adjusted one if there is one, nan if none."""
         found = self.inputs[self.inputs["input"].str.rsplit("/", n=1).str[-1] == key]
         if not len(found):
-            return math.nan
+            computed = self.facts.get("trap_constants", {}).get(key, {})
+            return float(computed.get("estimate" if self.stated else "adjusted", computed.get("estimate", math.nan)))
         adjusted = float(found["adjusted_estimate"].iloc[0])
         return float(found["estimate"].iloc[0]) if math.isnan(adjusted) else adjusted
 
@@ -49,7 +51,7 @@ class Findings:
 
     def as_stated(self) -> Findings:
         """The same with every input at its estimate, as each method by itself holds them."""
-        return replace(self, inputs=self.inputs.assign(adjusted_estimate=math.nan))
+        return replace(self, inputs=self.inputs.assign(adjusted_estimate=math.nan), stated=True)
 
     def used(self, log: str) -> pd.DataFrame:
         """Readings of one log that entered."""

@@ -11,6 +11,7 @@ FLAGS: dict[str, str] = {
     "outlier_reading": "a reading lies more than 4 standard deviations from its method's fit; it is kept",
     "beyond_usable_height": "a height lies beyond the usable height of the trap; it is kept",
     "finite_reynolds": "the finite Reynolds number of the micromotion shifts a height by more than 5 %",
+    "field_departure": "the field's departure from the linear one shifts a height by more than 5 % and its u",
     "charge_drift": "the charge drifts; charge-to-mass refers to the mean time of the balance readings",
     "no_oscillation": "the secular log was left out: at this charge and drag no secular oscillation exists",
     "unstable": "readings lie outside the stable region of the motion",

@@ -164,7 +164,7 @@ def _group_mean(cells: Cells, group: str) -> GroupMean:
         nothing = Residuals(np.zeros(0), np.zeros(0))
         return GroupMean(group, len(at), int(count.sum()), count, y, np.ones(1), float(y[0]), math.nan, math.nan,
                          intrinsic, np.full(1, math.nan), nothing)  # fmt: skip
-    left = residuals(y, np.diag(sampling) + shared @ shared.T)
+    left = residuals(y, np.diag(sampling) + (shared @ shared.T).toarray())
     tau = paule_mandel(left)
     total = max(tau, float(sampling.mean())) + sampling
     weights = 1.0 / total if (total > 0.0).all() else np.ones(len(at))

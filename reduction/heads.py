@@ -6,7 +6,7 @@ import difflib
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from reduction.contract import DRIVE_VOLTAGES, LOGS, READING_LOGS, Column
+from reduction.contract import DRIVE_VOLTAGES, LOGS, MARKING, READING_LOGS, Column
 from reduction.csvfile import Sheet
 from reduction.errors import Faults, nearest
 from reduction.units import QUANTITIES, UNITS, split_name, units_of
@@ -27,14 +27,16 @@ class Match:
 
 
 def columns_of(log: str) -> tuple[Column, ...]:
-    """Columns that a log may have, with the drive voltage in its three conventions."""
+    """Columns that a log may have, with the drive voltage in its three conventions, or a table of marking."""
+    if log in MARKING:
+        return MARKING[log]
     particle, *others = LOGS[log]
     return (particle, *(DRIVE_VOLTAGES if log in READING_LOGS or log == "lost" else ()), *others)
 
 
 def knows(log: str, head: str) -> bool:
     """Whether a head names a column of this log, whatever its unit."""
-    return head in _STEMS or split_name(head)[0] in {column.stem for column in columns_of(log)}
+    return (head in _STEMS and log in LOGS) or split_name(head)[0] in {column.stem for column in columns_of(log)}
 
 
 def match_heads(sheet: Sheet, log: str, *, faults: Faults) -> tuple[list[Match], list[int]]:
@@ -103,7 +105,7 @@ def _slip(sheet: Sheet, index: int, missing: dict[str, Column], log: str, faults
                        expected="a name for each column", advice="Name it, or empty it.")  # fmt: skip
         return ""
     stem, unit = split_name(head)
-    if "drive_voltage" in (stem, head) and log != "particles":
+    if "drive_voltage" in (stem, head) and log in LOGS and log != "particles":
         found, expected = "a drive voltage whose convention is not said", _DRIVE_WORDS
         _fault(
             sheet, head, found, expected, "Rename it by what the meter shows; the three differ by up to 2.83.", faults
@@ -116,7 +118,7 @@ def _slip(sheet: Sheet, index: int, missing: dict[str, Column], log: str, faults
             expected = f"one of {', '.join(units_of(_dimension(column)))}"
             _fault(sheet, head, found, expected, f"Write {column.name}, say.", faults)
             return column.stem
-    if head in _STEMS or stem in _STEMS:
+    if log in LOGS and (head in _STEMS or stem in _STEMS):
         return None  # a column of another log
     near = max(((_likeness(head, stem, unit, column), column.name) for column in missing.values()), default=(0.0, ""))
     if near[0] < _CLOSE:

@@ -7,10 +7,15 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 from reduction import air, drag, gravity
+from reduction.errors import Fault, InputError
+from reduction.fieldmap import CORRECTION_U
 from reduction.quantity import Quantity
-from reduction.settings import Campaign, Session, Species
+from reduction.settings import Campaign, Session, Species, Trap
 
 CELSIUS_ZERO = 273.15
+DIMENSION = "dimension:"  # and its name: the role of a dimension of the electrodes
+DEPARTURE = {"component": Quantity(0.0, 1.0), "corrected": Quantity(1.0, CORRECTION_U)}
+"""How much of the estimated shift of a height by the field's departure is true."""
 
 
 @dataclass(frozen=True)
@@ -115,13 +120,9 @@ def shared_inputs(campaign: Campaign, session: Session, species: Sequence[Specie
     """
     trap = campaign.traps[session.trap]
     found = [
-        _input("trap", trap.id, "dc_field_per_volt_per_m", "dc_field", trap.dc_field_per_volt, "1/m"),
+        *_trap_inputs(trap),
         _input("session", session.id, "stray_field_V_per_m", "stray_field", trap.stray_field, "V/m"),
     ]
-    if trap.ac_gradient_per_volt is not None:
-        found.append(
-            _input("trap", trap.id, "ac_gradient_per_volt_per_m2", "ac_gradient", trap.ac_gradient_per_volt, "1/m2")
-        )
     found += _instrument_inputs(session)
     found += _site_inputs(session)
     for one in species:
@@ -129,6 +130,24 @@ def shared_inputs(campaign: Campaign, session: Session, species: Sequence[Specie
     found += _formula_inputs(session)
     found.append(_input("session", session.id, "finite_reynolds", "finite_reynolds", Quantity(0.0, 1.0)))
     return tuple(sorted(found, key=lambda one: one.name))
+
+
+def _trap_inputs(trap: Trap) -> Iterator[Input]:
+    """The constants as stated; or, from a drawing, its dimensions, the solution's own u and the field's departure."""
+    if trap.drawing is not None and trap.constants is None:
+        message = f"trap {trap.id}: nothing follows from its drawing; motescale check says why"
+        raise InputError([Fault(f"traps/{trap.id}.yaml", column="electrodes", found=message)])
+    if trap.drawing is None or trap.constants is None:
+        yield _input("trap", trap.id, "dc_field_per_volt_per_m", "dc_field", trap.dc_field_per_volt, "1/m")
+        if trap.ac_gradient_per_volt is not None:
+            yield _input(
+                "trap", trap.id, "ac_gradient_per_volt_per_m2", "ac_gradient", trap.ac_gradient_per_volt, "1/m2"
+            )
+        return
+    for name, quantity in trap.drawing.dimensions.items():
+        yield _input("trap", trap.id, name, DIMENSION + name, quantity, "mm", 1e-3)
+    yield _input("trap", trap.id, "field_solution", "field_solution", _relative(trap.constants.solution_u))
+    yield _input("trap", trap.id, "field_departure", "field_departure", DEPARTURE[trap.drawing.departure])
 
 
 def _formula_inputs(session: Session) -> Iterator[Input]:

@@ -34,6 +34,14 @@ _BY_KEY = {
     "diameter_spread_um": "diameter",
 }
 _BY_SCOPE = {"trap": "trap", "campaign": "formulas", "instrument": "gains", "session": "gains", "species": "species"}
+VALUES = {  # columns of each result and its u in particles.csv
+    "charge_to_mass": ("charge_to_mass_C_per_kg", "u_charge_to_mass_C_per_kg"),
+    "drag_rate": ("drag_rate_per_s", "u_drag_rate_per_s"),
+    "diameter": ("diameter_um", "u_diameter_um"),
+    "mass": ("mass_kg", "u_mass_kg"),
+    "charge": ("charge_C", "u_charge_C"),
+    "surface_charge_density": ("surface_charge_density_C_per_m2", "u_surface_charge_density_C_per_m2"),
+}
 _ENOUGH = 0.7  # of the variance: a sentence names groups until they make up this much
 _NAMED = 0.5  # of a group: the input that makes up this much of it is named
 _READINGS = 0.1  # of the variance: below it more readings of the same kind do not help

@@ -28,7 +28,8 @@ def logged_in(folder: Path) -> Logged:
         path = folder / f"{log}.csv"
         if not os.path.lexists(path):
             continue
-        text = read_text(path, path.name, faults=Faults(), limit=_GLANCE, lines=_GLANCE, head_only=True)
+        name = f"sessions/{folder.name}/{log}.csv"
+        text = read_text(path, name, faults=Faults(), limit=_GLANCE, lines=_GLANCE, head_only=True)
         rows = [line for line in text.lines if holds_text(line)] if text else []
         if text is None or len(rows) > 1:
             logs.append(log)

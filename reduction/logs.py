@@ -6,7 +6,7 @@ import difflib
 import os
 import re
 from collections.abc import Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
@@ -24,7 +24,7 @@ from reduction.units import QUANTITIES, from_unit, range_text
 
 _FAULTS_SHOWN = 10  # of one sort in one column; a file with a wrong decimal mark would have one a cell
 _DIGITS = frozenset("0123456789+-.eE")
-_NUMBER = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
+_NUMBER = re.compile(r"[+-]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
 
 
 @dataclass(frozen=True)
@@ -95,6 +95,8 @@ def _table(sheet: Sheet, log: str, faults: Faults) -> tuple[pd.DataFrame, list[s
     for column in columns_of(log):
         columns.setdefault(column.field, np.full(len(sheet.lines), np.nan) if column.of else [""] * len(sheet.lines))
     for match in matches:
+        if match.column.field == "drive_amplitude" and log in READING_LOGS:  # one of the three conventions is there
+            match = replace(match, column=replace(match.column, required=True))
         read = _numbers(sheet, match, mark, faults) if match.column.of else _texts(sheet, match, faults)
         columns[match.column.field] = read
     table = pd.DataFrame(columns)
@@ -271,14 +273,22 @@ def _check_particles(
     logged = set().union(
         *(table["particle"] for table in tables.values()), lost["particle"] if lost is not None else ()
     )
-    for line, particle in zip(particles["line"], particles["particle"], strict=True):
-        if particle not in logged:
-            near = difflib.get_close_matches(particle, sorted(logged), n=1, cutoff=0.6)
-            faults.add(
-                f"sessions/{session}/particles.csv",
-                line=int(line),
-                column="particle",
-                found=f"{particle}, which no log has",
-                expected="a particle of balance.csv, secular.csv, height.csv or lost.csv",
-                advice=f"Did you mean {near[0]}?" if near else "Delete the row.",
-            )
+    strangers = particles[~particles["particle"].isin(logged)]
+    for line, particle in zip(strangers["line"][:_FAULTS_SHOWN], strangers["particle"], strict=False):
+        near = difflib.get_close_matches(particle, sorted(logged), n=1, cutoff=0.6)
+        faults.add(
+            f"sessions/{session}/particles.csv",
+            line=int(line),
+            column="particle",
+            found=f"{particle}, which no log has",
+            expected="a particle of balance.csv, secular.csv, height.csv or lost.csv",
+            advice=f"Did you mean {near[0]}?" if near else "Delete the row.",
+        )
+    if len(strangers) > _FAULTS_SHOWN:
+        faults.add(
+            f"sessions/{session}/particles.csv",
+            line=int(strangers["line"].iloc[_FAULTS_SHOWN]),
+            column="particle",
+            found=f"{len(strangers) - _FAULTS_SHOWN} more particles that no log has, from here on",
+            expected="particles of balance.csv, secular.csv, height.csv or lost.csv",
+        )

@@ -15,7 +15,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from reduction import air, drag, gravity, motion
-from reduction.inputs import Input
+from reduction.fieldmap import FieldMap, height_shift, shift_at
+from reduction.inputs import DIMENSION, Input
 
 Array = NDArray[np.floating[Any]]
 Flags = NDArray[np.bool_]
@@ -23,7 +24,9 @@ Indices = NDArray[np.intp]
 PRIVATE = ("ln_charge_to_mass", "ln_drag_rate", "height_origin", "charge_drift", "shape_deviation")
 LN_S, LN_GAMMA, ORIGIN, DRIFT, SHAPE = range(5)
 STEP = 1e-5  # of central differences in logarithms and in xi: truncation and rounding both near 1e-10
-SIGNED = ("stray_field", "offset_dc_voltage", "humidity", "latitude", "elevation", "finite_reynolds")
+SIGNED = (
+    "stray_field", "offset_dc_voltage", "humidity", "latitude", "elevation", "finite_reynolds", "field_departure",
+)  # fmt: skip
 LEAST = 0.02  # of its estimate, the least a positive input is tried at
 SINGULAR = 1e-6  # smallest singular value of a scaled Jacobian over the largest, below which rank is missing
 REACH = 60.0  # ln s and ln gamma beyond this are tried as this
@@ -51,6 +54,7 @@ class Readings:
     lot: NDArray[np.bool_]
     row: NDArray[np.intp]
     reynolds: Array  # relative shift of each height by its finite Reynolds number, 0 until estimated
+    departure: Array  # shift of each height by the field's departure from the linear one [m], 0 until estimated
 
     def select(self, chosen: Flags | Indices) -> Readings:
         """Only the readings where `chosen` holds, or those it numbers, in its order."""
@@ -78,6 +82,7 @@ class Setting:
     shape_spread: Array  # of each particle, 0 where none is stated
     has_density: NDArray[np.bool_]  # of each particle
     uncertain: tuple[int, ...] = field(default=())  # indices of the inputs with u above zero
+    field_map: FieldMap | None = None  # of a trap whose constants follow from the dimensions of its electrodes
 
     def of(self, index: int) -> Setting:
         """The same for one particle alone."""
@@ -112,9 +117,12 @@ def surroundings(setting: Setting, xi: Array) -> Surroundings:
         value = np.full(shape, one.quantity.estimate)
         if index in columns:
             value = value + one.quantity.u * xi[:, :, columns[index]]
-            if one.role not in SIGNED:  # a wild trial step must not ask for a negative density
+            # a wild trial step must not ask for a negative density
+            if one.role not in SIGNED and not one.role.startswith(DIMENSION):
                 value = np.maximum(value, LEAST * one.quantity.estimate)
         values[one.role] = value
+    if setting.field_map is not None:
+        values["dc_field"], values["ac_gradient"] = setting.field_map.constants(values)
     temperature, pressure = values["temperature"], values["pressure"]
     rho = air.density(temperature, pressure, values["humidity"]) * values["air_density_formula"]
     eta = air.viscosity(temperature) * values["viscosity_formula"]
@@ -273,7 +281,10 @@ def predict_height(
     shown = carried(motion.streak_factor, scaled) if setting.height_reading == "streak_middle" else 1.0
     gain = _at(value["gain_height"], at)
     reynolds = _at(value["finite_reynolds"], at) * log.reynolds
-    reading = (_at(theta[..., ORIGIN], at) + mean * shown * (1.0 + reynolds)) / gain
+    height = mean * shown * (1.0 + reynolds)
+    if "field_departure" in value:
+        height = height + _at(value["field_departure"], at) * log.departure * shown
+    reading = (_at(theta[..., ORIGIN], at) + height) / gain
     dc_gain = _at(value["gain_dc_voltage"], at)
     slope = (setting.polarity * dc_gain * per_volt * shown * (1.0 + reynolds) / gain)[0]
     return Prediction(reading, slope)
@@ -296,12 +307,40 @@ def with_reynolds(setting: Setting, log: Readings, theta: Array, sign: Array) ->
             getattr(scaled, name)[0][known] for name in ("drive", "drag", "added_mass", "history", "omega")
         )
         gain = float(around.values["gain_height"][0, 0])
-        linear = replace(log, reynolds=np.zeros(len(log)))
+        linear = replace(log, reynolds=np.zeros(len(log)), departure=np.zeros(len(log)))
         height = predict_height(setting, around, particle, theta[None], linear).reading[0]
         mean = (gain * height - _at(theta[None, :, ORIGIN], log.particle)[0])[known]
         found = motion.reynolds_shift(mean, h, b, omega, diameter[known], rho, eta, added, history)
         shift[known] = np.where(np.isfinite(found), found, 0.0)
     return replace(log, reynolds=shift)
+
+
+def with_departure(setting: Setting, log: Readings, theta: Array, sign: Array, *, observed: bool = False) -> Readings:
+    """Heights with the shift that the field's departure from the linear one causes, at theta (N, 5).
+
+    As with the Reynolds number it is estimated once; the input `field_departure` says what is made of it. With
+    `observed` the height is taken from the reading, which is the better guess while theta is still a rough one.
+    """
+    field_map = setting.field_map
+    if field_map is None:
+        return log
+    around = surroundings(setting, np.zeros((1, 1, len(setting.uncertain))))
+    particle = particle_properties(setting, around, theta[None], sign)
+    scaled = scaled_motion(setting, around, particle, theta[None], log)
+    value = {name: one[0, 0] for name, one in around.values.items()}
+    with np.errstate(all="ignore"):
+        per_force = 1.0 / (scaled.omega[0] ** 2 * carried(motion.stiffness, scaled)[0])
+        true = setting.polarity * (value["gain_dc_voltage"] * log.voltage + value["offset_dc_voltage"])
+        s = particle.charge_to_mass[0, log.particle] * np.exp(theta[log.particle, DRIFT] * log.elapsed)
+        lift = s * value["dc_field"] * true * per_force
+        if observed:
+            shown = carried(motion.streak_factor, scaled)[0] if setting.height_reading == "streak_middle" else 1.0
+            height = (value["gain_height"] * log.observed - theta[log.particle, ORIGIN]) / shown
+            shift = shift_at(height, lift, field_map.drive, field_map.dc)
+        else:
+            linear = lift + (s * value["stray_field"] - particle.weight[0, log.particle]) * per_force
+            shift = height_shift(linear, lift, field_map.drive, field_map.dc)
+    return replace(log, departure=np.where(np.isfinite(shift), shift, 0.0))
 
 
 def predict_secular(

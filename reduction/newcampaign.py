@@ -121,10 +121,49 @@ _QUANTITIES = (
 )
 
 
+DRAWN = """\
+electrodes:
+  dc_applied: both_plates
+  departure: component
+  dimensions_mm:
+    ring_radius: 6.00(5)
+    wire_radius: {value: 0.75, half_width: 0.02, shape: rectangular}
+    plate_height: 4.50(5)
+    plate_thickness: 1.50(2)
+    hole_radius: 0.60(3)
+    plate_radius: 9.0(1)
+  conductors:
+    ring:
+      carries: drive
+      circle: {centre: [ring_radius, 0], radius: wire_radius}
+    plate:
+      carries: dc_above
+      mirrored: yes
+      rectangle: {r: [hole_radius, plate_radius], z: [plate_height, [plate_height, plate_thickness]]}
+    can:
+      carries: ground
+      outline: [[0, 30], [25, 30], [25, -30], [0, -30]]
+"""
+"""An invented trap, drawn: what the commented file of a new trap shows."""
+_DRAWN_ABOUT = (
+    "In place of the two constants: the electrodes, drawn in the half plane of radius r and height z, in mm, as for a "
+    "lathe; the program then computes the constants, and each dimension is an input with its own uncertainty. A "
+    "coordinate is a number, the name of a dimension, one with a minus, or a list of those that is summed. An outline "
+    "is a list of points [r, z] and arcs {arc_to: [r, z], centre: [r, z], turning: anticlockwise} that comes back to "
+    "its first point or begins and ends on the axis; circle and rectangle are outlines written short. What each "
+    "carries: drive, dc_above, dc_below or ground; mirrored: yes adds its image below the middle plane, dc_above then "
+    "being dc_below. dc_applied: both_plates (half on each) or one_plate. departure: component or corrected, of the "
+    "field from the linear one. Delete the two constants above, and the # of these lines:"
+)
+
+
 def _key_lines(keys: tuple[Key, ...], indent: str = "", *, given: dict[str, str] | None = None) -> list[str]:
     """Lines for a table of keys: what is required stands empty, the rest is commented out."""
     given, lines = given or {}, []
     for key in keys:
+        if key.name == "electrodes":
+            lines += [_comment(_DRAWN_ABOUT), *(f"# {line}" for line in DRAWN.splitlines())]
+            continue
         if key.kind == "mapping":
             needed = any(inner.required for inner in key.keys) or key.required
             mark = "" if needed else "# "

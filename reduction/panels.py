@@ -47,7 +47,7 @@ def number(value: float) -> str:
 
 def heading(axes: Axes, text: str) -> None:
     """Quantity and unit of the vertical axis, set level above its upper end."""
-    axes.set_title(text, loc="left", fontsize=8, pad=3, color=INK)
+    axes.set_title(text, loc="left", fontsize=8, pad=3, y=1.0, color=INK)  # y: no search for a free place
 
 
 def _mark(axes: Axes, rows: Sequence[Row], x: Array, y: Array, u: Array, colour: str, marker: str) -> None:

@@ -21,3 +21,14 @@ def snakefile() -> Path:
 def workflow_folder() -> Path:
     """Folder of the rules, the report's templates, the schemas and the profiles."""
     return root() / "workflow"
+
+
+def definition() -> list[tuple[str, Path]]:
+    """Files that define the workflow, the Snakefile and its rules: path below `root`, and where it lies; sorted."""
+    files = [snakefile(), *(workflow_folder() / "rules").glob("*.smk")]
+    return sorted((path.relative_to(root()).as_posix(), path) for path in files)
+
+
+def lock() -> Path:
+    """File that pins every library the program was released with."""
+    return root() / ".locks" / "requirements.lock"

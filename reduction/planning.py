@@ -9,6 +9,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy import sparse
 
 from reduction.comparison import Comparison
 from reduction.errors import ReductionError
@@ -98,9 +99,10 @@ def components_of(found: Comparison, group: str) -> Components:
         raise PlanningError(f"group {group}: found fewer than two sessions; expected two or more, or stated guesses.")
     one = places[group]
     count = found.cells.count[at]
-    session = np.array([scope == "session" for scope in found.cells.scopes], dtype=bool)
+    session = np.flatnonzero([scope == "session" for scope in found.cells.scopes])
     own = float(np.average(found.cells.own[at] * count, weights=count))
-    anew = float(np.mean((found.cells.shared[at][:, session] ** 2).sum(axis=1)))
+    drawn = found.cells.shared[at][:, session]
+    anew = float(drawn.multiply(drawn).sum()) / len(at)
     return Components(
         math.sqrt(one.tau_squared), math.sqrt(np.nan_to_num(one.particle_variance)), math.sqrt(own), math.sqrt(anew)
     )
@@ -213,5 +215,5 @@ def simulated_cells(
     own = components.u_particle**2
     return Cells(
         names, group, np.full(total, count), mean, squares, np.full(total, own * (count - 1.0)),
-        np.full(total, own / count), shared, inputs, ("session",) * total + ("species",) * 2,
+        np.full(total, own / count), sparse.csr_array(shared), inputs, ("session",) * total + ("species",) * 2,
     )  # fmt: skip

@@ -68,6 +68,7 @@ def prepare(campaign: Campaign, session: Session, logs: Logs) -> Prepared:
         np.array([by_name[name].shape_factor_spread or 0.0 for name in species]),
         np.array([by_name[name].density is not None for name in species], dtype=bool),
         uncertain_inputs(inputs),
+        campaign.traps[session.trap].field_map,
     )
     left_out: list[tuple[str, int, str, str]] = []
     readings, unstated = {}, {}
@@ -148,6 +149,7 @@ def _readings(
         np.zeros(count, bool),
         used.index.to_numpy(np.intp)[order],
         np.zeros(count),
+        np.zeros(count),
     )
 
 
@@ -184,6 +186,7 @@ def _diameters(
         empty,
         np.array([row[3] for row in rows], dtype=bool),
         np.full(count, -1, dtype=np.intp),
+        empty,
         empty,
     )
 

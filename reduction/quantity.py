@@ -14,9 +14,11 @@ from reduction.units import UNITS, from_unit
 SHAPES = {"normal": 1.0, "rectangular": math.sqrt(3.0), "triangular": math.sqrt(6.0), "arcsine": math.sqrt(2.0)}
 """Half width over standard uncertainty of each shape, GUM 4.3.7 and 4.3.9; normal has no half width."""
 
-_NUMBER = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
+# Each digit can be taken in one way only: a text of a million digits that is no number is refused at once.
+_NUMBER = re.compile(r"[+-]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
 _SHORTHAND = re.compile(
-    r"(?P<estimate>[+-]?(?:\d+\.?\d*|\.\d+)) ?\((?P<u>\d+\.?\d*|\.\d+)\)(?P<power>[eE][+-]?\d+)?", re.ASCII
+    r"(?P<estimate>[+-]?(?:\d+(?:\.\d*)?|\.\d+)) ?\((?P<u>\d+(?:\.\d*)?|\.\d+)\)(?P<power>[eE][+-]?\d{1,9})?",
+    re.ASCII,
 )
 _EXPECTED = "a number such as 20, 61.3(9), 1.310(20)e4, or {value: 20, u: 0.4}"
 _EXACT = Context(prec=400, rounding=ROUND_HALF_EVEN)

@@ -9,13 +9,14 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
-from reduction.methods import Readings
+from reduction.methods import ORIGIN, Readings
 from reduction.outcome import Outcome
 from reduction.preparation import OBSERVED
 from reduction.resultrows import readings_used
 from reduction.solution import OUTLIER
 
 REYNOLDS_LIMIT = 0.05  # relative shift of a height beyond which it is flagged
+DEPARTURE_LIMIT = 0.05  # likewise, by the field's departure from the linear one, where it exceeds u of the height
 
 
 def flag_readings(outcome: Outcome) -> None:
@@ -56,6 +57,12 @@ def _height_words(outcome: Outcome, readings: Readings, at: int, usable: float |
     shift = float(readings.reynolds[at])
     if abs(shift) > REYNOLDS_LIMIT:
         words.append(("finite_reynolds", f"the finite Reynolds number shifts it by {100.0 * shift:+.2g} %"))
+    away = float(readings.departure[at])
+    from_centre = gain * height - float(outcome.reduced.alone.theta[int(readings.particle[at]), ORIGIN])
+    if abs(away) > max(DEPARTURE_LIMIT * abs(from_centre), float(readings.u[at])):
+        words.append(
+            ("field_departure", f"the field's departure from the linear one shifts it by {away * 1e3:+.2g} mm")
+        )
     return words
 
 

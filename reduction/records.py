@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import errno
 import os
 import shutil
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from reduction.wholefile import read_json, write_json
+from reduction.wholefile import part_of, read_json, write_json
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -32,22 +33,33 @@ class SessionRecord:
         return str(self.facts["session"])
 
     def save(self, folder: Path | str) -> None:
-        """Write the record as a folder that is there whole or not at all."""
+        """Write the record as a folder that is there whole or not at all; one that is there already stays.
+
+        It is named by all that its content depends on, so that it holds the same: another job wrote it, on a node that
+        was thought lost, say.
+        """
+        folder = Path(folder)
+        part = part_of(folder)
+        part.mkdir(parents=True)
+        try:
+            self._write(part)
+            os.replace(part, folder)
+        except OSError as error:
+            if error.errno not in (errno.ENOTEMPTY, errno.EEXIST):
+                raise
+        finally:
+            shutil.rmtree(part, ignore_errors=True)
+
+    def _write(self, folder: Path) -> None:
         from reduction.tables import COLUMNS, write_table
 
-        folder = Path(folder)
-        part = folder.with_name(f".{folder.name}.part")
-        shutil.rmtree(part, ignore_errors=True)
-        part.mkdir(parents=True)
         unknown = sorted(set(self.tables) - set(PIECES))
         if unknown:
             message = f"tables no record has: {unknown}"
             raise ValueError(message)
         for name in PIECES:
-            write_table(part / f"{name}.csv", COLUMNS[name], self.tables.get(name, []))
-        write_json(part / FACTS, self.facts)
-        shutil.rmtree(folder, ignore_errors=True)
-        os.replace(part, folder)
+            write_table(folder / f"{name}.csv", COLUMNS[name], self.tables.get(name, []))
+        write_json(folder / FACTS, self.facts)
 
 
 def load(folder: Path | str) -> SessionRecord:

@@ -6,6 +6,7 @@ import binascii
 import hashlib
 import json
 import os
+import secrets
 import shutil
 import sys
 import time
@@ -17,16 +18,20 @@ from pathlib import Path
 from typing import IO
 
 from reduction import places
-from reduction.batches import STATE, Plan, make_plan, record_folder
-from reduction.digests import package_digest, session_files
+from reduction.batches import STATE, Plan, constants_folder, make_plan, record_folder
+from reduction.checksums import set_edited_aside
+from reduction.digests import definition_digest, package_digest, session_files
 from reduction.errors import ResultsError
-from reduction.wholefile import write_json
+from reduction.wholefile import write_json, write_whole
 
 try:
     import fcntl
 except ImportError:  # no such lock on this system: two runs at once are then the user's to avoid
     fcntl = None  # type: ignore[assignment]
 
+FOLDERS = ("MOTESCALE_CAMPAIGN", "MOTESCALE_RESULTS")  # tell the jobs of a run where they are to read and write
+RUN = "MOTESCALE_RUN"  # tells the jobs which run they belong to
+MARKING = "marking"  # folder in the results for marks, by name as in the campaign
 PATIENCE = 120.0  # how long to wait for jobs that outlived a killed run [s]
 
 
@@ -80,19 +85,30 @@ def check_code(home: Path) -> None:
         raise ResultsError(message)
 
 
-def job_environment(home: Path | None) -> dict[str, str]:
-    """Environment of the jobs: the package of this workflow, no modules from the results folder, one thread each.
+def job_environment(campaign: Path, results: Path, home: Path | None) -> dict[str, str]:
+    """Environment of the jobs: whose they are, the package of this workflow, one thread each.
 
     Parameters
     ----------
+    campaign, results : Path
+        The folders, which a job on a cluster cannot tell from the command line where they were given relative to
+        where the run began.
     home : Path, optional
         Folder of the package in a checkout; None where it is installed and Python finds it by itself.
     """
     found = dict.fromkeys(("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"), "1")
     found |= {"MPLBACKEND": "Agg", "PYTHONSAFEPATH": "1", "PYTHONHASHSEED": "0"}
+    found |= {FOLDERS[0]: str(campaign), FOLDERS[1]: str(results), RUN: _run_id(results)}
     if home is not None:
-        found["PYTHONPATH"] = os.pathsep.join([str(home), *filter(None, [os.environ.get("PYTHONPATH")])])
+        before = [part for part in os.environ.get("PYTHONPATH", "").split(os.pathsep) if part not in ("", str(home))]
+        found["PYTHONPATH"] = os.pathsep.join([str(home), *before])
     return found
+
+
+def _run_id(results: Path) -> str:
+    with suppress(OSError):
+        return (results / STATE / "run.id").read_text(encoding="utf-8").strip()
+    return ""
 
 
 def begin(campaign: Path, results: Path, tell: Callable[[str], object] = sys.stderr.write) -> tuple[IO[str], Plan]:
@@ -105,13 +121,42 @@ def begin(campaign: Path, results: Path, tell: Callable[[str], object] = sys.std
     """
     check_folders(campaign, results)
     held = take(results)
-    wait_for_jobs(results, tell)
-    clear_after_kill(results)
-    made = make_plan(campaign)
-    claim(results, campaign, made)
-    made.save(results)
-    drop_stale(results, made)
+    try:
+        write_whole(results / STATE / "run.id", secrets.token_hex(8).encode())  # jobs that begin from here on know
+        wait_for_jobs(results, tell)
+        clear_after_kill(results)
+        made = make_plan(campaign)
+        claim(results, campaign, made)
+        made.save(results)
+        set_edited_aside(results, tell)
+        drop_stale(results, made)
+        no_time_to_come(results)
+    except OSError as error:
+        raise unwritable(results, error) from None
     return held, made
+
+
+def unwritable(results: Path, error: OSError) -> ResultsError:
+    """A results folder that is full or closed, and what to do."""
+    why = error.strerror or str(error)
+    return ResultsError(
+        f"{results}: cannot be written to ({why}). Make room, or allow it, or give a results folder of your own."
+    )
+
+
+def no_time_to_come(results: Path) -> None:
+    """Take back time stamps that lie in the future, of results made while a clock was wrong.
+
+    What was made from them since would look older than they are for as long, and be made again by every run. The
+    digests say what has to be made; between files all that counts is that none looks newer than it is.
+    """
+    state = results / STATE
+    places = (results, results / "readings", results / "sessions", state, state / "reduced", state / "drawn")
+    stamps = {path: path.stat().st_mtime for place in places if place.is_dir() for path in place.iterdir()}
+    ahead = [path for path, stamp in stamps.items() if stamp > time.time() and path.is_file()]
+    for path in ahead:
+        oldest = min(stamps.values())
+        os.utime(path, (oldest, oldest))
 
 
 def make_state(results: Path) -> None:
@@ -119,8 +164,7 @@ def make_state(results: Path) -> None:
     try:
         (results / STATE / "logs").mkdir(parents=True, exist_ok=True)
     except OSError as error:
-        message = f"{results}: cannot be written to ({error.strerror}). Give a results folder of your own."
-        raise ResultsError(message) from None
+        raise unwritable(results, error) from None
 
 
 def take(results: Path) -> IO[str]:
@@ -133,10 +177,9 @@ def take(results: Path) -> IO[str]:
     """
     make_state(results)
     try:
-        handle = open(results / STATE / "run.lock", "a", encoding="utf-8")  # noqa: SIM115 - held until the process ends
+        handle = open(results / STATE / "run.lock", "a+", encoding="utf-8")  # noqa: SIM115 - held until the process ends
     except OSError as error:
-        message = f"{results}: cannot be written to ({error.strerror}). Give a results folder of your own."
-        raise ResultsError(message) from None
+        raise unwritable(results, error) from None
     if not _lock(handle, exclusive=True):
         handle.close()
         message = f"{results}: another run is going on in this folder. Wait for it to end, or give another folder."
@@ -157,11 +200,28 @@ def _lock(handle: IO[str], *, exclusive: bool, wait: bool = False) -> bool:
     return True
 
 
+def join(results: Path) -> IO[str]:
+    """Mark a job as going on for as long as what is returned is open, so that a later run waits for its end.
+
+    Raises
+    ------
+    ResultsError
+        If the run it belongs to is over and another has begun: it was queued on a cluster when its run was killed.
+    """
+    make_state(results)
+    handle = open(results / STATE / "jobs.lock", "a+", encoding="utf-8")  # noqa: SIM115 - held until the job ends
+    _lock(handle, exclusive=False, wait=True)
+    if os.environ.get(RUN) not in (None, "", _run_id(results)):
+        handle.close()
+        message = "the run this job belongs to is over and another has begun. Nothing was done."
+        raise ResultsError(message)
+    return handle
+
+
 @contextmanager
 def job(results: Path) -> Iterator[None]:
-    """Mark a job as going on, so that a later run waits for it should it outlive its own."""
-    with open(results / STATE / "jobs.lock", "a", encoding="utf-8") as handle:
-        _lock(handle, exclusive=False, wait=True)
+    """Mark a job as going on (see `join`) while it lasts."""
+    with join(results):
         yield
 
 
@@ -169,7 +229,7 @@ def wait_for_jobs(results: Path, tell: Callable[[str], object], patience: float 
     """Wait until no job of an earlier, killed run writes into the folder any more."""
     told = False
     deadline = time.monotonic() + patience
-    with open(results / STATE / "jobs.lock", "a", encoding="utf-8") as handle:
+    with open(results / STATE / "jobs.lock", "a+", encoding="utf-8") as handle:
         while not _lock(handle, exclusive=True):
             if time.monotonic() > deadline:
                 message = f"{results}: a job of a run that was killed is still at work here. Wait for it to end."
@@ -224,6 +284,11 @@ def drop_stale(results: Path, plan: Plan) -> None:
         _drop(state / "reduced" / f"{batch}.json", reduced, plan.batch_digest(batch))
         drawn = all(page(results, name, plan.page_name(name)).is_file() for name in names)
         _drop(state / "drawn" / f"{batch}.json", drawn, pages_digest(plan, batch))
+        if plan.marks:
+            marked = all(marks_file(results, name, plan.marks[name]).is_file() for name in names)
+            _drop(state / "marked" / f"{batch}.json", marked, plan.marks_digest(batch))
+            drawn = all(bench_page(results, name, plan.bench_page_name(name)).is_file() for name in names)
+            _drop(state / "feedback_drawn" / f"{batch}.json", drawn, bench_pages_digest(plan, batch))
     if plan.together:
         adjusted = all(folder.is_dir() for _, folder in plan.records(results))
         _drop(state / "adjusted.json", adjusted, plan.adjusted)
@@ -247,6 +312,26 @@ def page(results: Path, session: str, name: str) -> Path:
     return results / STATE / "pages" / session / f"{name}.pdf"
 
 
+def provenance_digest(plan: Plan) -> str:
+    """Digest of all that the files of the last step depend on, the definition of the workflow included."""
+    return digest_of([plan.campaign, definition_digest()])
+
+
+def marks_file(results: Path, session: str, name: str) -> Path:
+    """File of one bench's marks among those that are kept."""
+    return results / STATE / "marks" / session / f"{name}.json"
+
+
+def bench_page(results: Path, session: str, name: str) -> Path:
+    """File of one bench's feedback among the pages that are kept."""
+    return results / STATE / "feedback" / session / f"{name}.pdf"
+
+
+def bench_pages_digest(plan: Plan, batch: str) -> str:
+    """Digest of all that the feedback of one batch depends on."""
+    return digest_of([plan.bench_page_name(name) for name in plan.batches[batch]])
+
+
 def pages_digest(plan: Plan, batch: str) -> str:
     """Digest of all that the pages of one batch depend on."""
     return digest_of([plan.page_name(name) for name in plan.batches[batch]])
@@ -255,6 +340,12 @@ def pages_digest(plan: Plan, batch: str) -> str:
 def digest_of(names: list[str]) -> str:
     """Digest of a list of digests."""
     return hashlib.sha256("\n".join(names).encode()).hexdigest()
+
+
+def _parts(results: Path) -> list[Path]:
+    """Files and folders that a killed job had begun; no job but the one that tidies is at work then."""
+    places = [results, results / "readings", results / "sessions", results / STATE, *(results / STATE).glob("*/")]
+    return sorted(path for place in places for path in place.glob(".*.part"))
 
 
 def tidy(results: Path, plan: Plan) -> None:
@@ -273,13 +364,31 @@ def tidy(results: Path, plan: Plan) -> None:
     for path in sorted((state / "pages").glob("*/*")):
         if path not in pages:
             path.unlink()
-    for part in ("reduced", "drawn"):
+    marks = {marks_file(results, name, own) for name, own in plan.marks.items()}
+    for path in sorted((state / "marks").glob("*/*")):
+        if path not in marks:
+            path.unlink()
+    feedback = {bench_page(results, name, plan.bench_page_name(name)) for name in plan.marks}
+    for path in sorted((state / "feedback").glob("*/*")):
+        if path not in feedback:
+            path.unlink()
+    for path in sorted((results / MARKING / "bench").glob("*")):
+        if path.suffix != ".pdf" or path.stem not in plan.marks:
+            path.unlink()
+    if not plan.marks:
+        shutil.rmtree(results / MARKING, ignore_errors=True)
+    for part in ("reduced", "drawn", "marked", "feedback_drawn"):
         for path in sorted((state / part).glob("*")):
-            if path.stem not in plan.batches:
+            if path.stem not in plan.batches or (part in ("marked", "feedback_drawn") and not plan.marks):
                 path.unlink()
-    for part in ("records", "pages"):
+    for path in sorted(constants_folder(results).glob("*")):
+        if path.is_dir():  # what a killed job was writing
+            shutil.rmtree(path, ignore_errors=True)
+        elif path.stem not in plan.drawings.values():
+            path.unlink()
+    for part in ("records", "pages", "marks", "feedback"):
         for path in sorted((state / part).glob("*")):
             with suppress(OSError):
                 path.rmdir()  # only where it is empty
-    for path in sorted(results.glob(".*.part")):
-        path.unlink()
+    for path in _parts(results):
+        shutil.rmtree(path) if path.is_dir() else path.unlink(missing_ok=True)

@@ -96,6 +96,8 @@ def changes(before: State, after: State) -> Iterator[str]:
         for name in sorted(set(a) | set(b)):
             if a.get(name) != b.get(name):
                 yield f"{word} {name}: {_text(a.get(name))} -> {_text(b.get(name))}"
+    if old.get("lock", new.get("lock")) != new.get("lock"):
+        yield "the lock of the libraries (.locks/requirements.lock)"
     if old.get("package") != new.get("package"):
         yield "the program itself (its files differ)"
 

@@ -15,8 +15,9 @@ from typing import IO
 
 from reduction import places
 from reduction.batches import STATE, Plan
-from reduction.resultsfolder import check_folders, finished_sessions, folder_of, make_state
+from reduction.resultsfolder import check_folders, finished_sessions, folder_of, make_state, unwritable
 from reduction.rundiff import difference_text, read_state
+from reduction.wholefile import write_whole
 
 LOG = f"{STATE}/logs/workflow.log"
 _STEP = re.compile(r"(reduce|session_reports) .*: \d+ sessions?, \d+ of them anew")
@@ -62,7 +63,7 @@ def _workflow(campaign: Path, results: Path, cores: str, loudness: str) -> int:
     environment = {name: value for name, value in os.environ.items() if not name.startswith("SNAKEMAKE_")}
     environment["PYTHONSAFEPATH"] = "1"  # no module is taken from the results folder
     verbose = loudness == "verbose"
-    with open(results / LOG, "w", encoding="utf-8") as log, _terminable():
+    with _log(results) as log, _terminable():
         process = subprocess.Popen(
             command,
             cwd=results,
@@ -83,9 +84,16 @@ def _workflow(campaign: Path, results: Path, cores: str, loudness: str) -> int:
     if status:
         if not verbose:
             sys.stderr.write("".join(f"{line}\n" for line in (told if loudness == "quiet" else [])))
-            sys.stderr.write(_reason(results / LOG))
+            sys.stderr.write(_reason(results / LOG) or _no_room(results))
         sys.stderr.write(f"Not finished. What is done stays; logs are in {results / STATE / 'logs'}\n")
     return status
+
+
+def _log(results: Path) -> IO[str]:
+    try:
+        return open(results / LOG, "w", encoding="utf-8")
+    except OSError as error:
+        raise unwritable(results, error) from None
 
 
 def _follow(process: subprocess.Popen[str], results: Path, log: IO[str], loudness: str) -> list[str]:
@@ -132,6 +140,17 @@ def _stop(process: subprocess.Popen[str]) -> None:
             process.wait(_GRACE)
         except subprocess.TimeoutExpired:
             process.kill()
+
+
+def _no_room(results: Path) -> str:
+    """What keeps the results folder from being written to, where the log could not say it for the same reason."""
+    trial = results / STATE / "logs" / "trial"
+    try:
+        write_whole(trial, bytes(2**16))
+        trial.unlink()
+    except OSError as error:
+        return f"{unwritable(results, error)}\n"
+    return ""
 
 
 def _reason(log: Path) -> str:

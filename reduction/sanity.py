@@ -53,9 +53,9 @@ def _outside_window(outcome: Outcome) -> Iterator[tuple[int, str, str]]:
     setting = adjusted.model.setting
     for log in ("balance", "height", "secular"):
         readings = adjusted.model.logs.get(log)
-        if readings is None or "ac_gradient" not in {one.role for one in setting.inputs}:
-            continue
         around = surroundings(setting, adjusted.xi[None])
+        if readings is None or "ac_gradient" not in around.values:
+            continue
         particle = particle_properties(setting, around, adjusted.theta[None], adjusted.model.sign)
         scaled = scaled_motion(setting, around, particle, adjusted.theta[None], readings)
         code = motion.regime(scaled.drive[0], scaled.drag[0], scaled.added_mass[0], scaled.history[0])

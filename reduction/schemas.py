@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import Any
 
 from reduction.contract import FILES, ID, Key
+from reduction.drawingfile import CARRIES, FORMS
 from reduction.units import QUANTITIES, UNITS, range_text, to_unit, units_of
 
 Schema = dict[str, Any]
@@ -56,7 +57,9 @@ def _mapping(keys: tuple[Key, ...], *, strict: bool) -> Schema:
     for key in keys:
         spellings = _spellings(key)
         properties |= {spelling: _value(key, unit, strict=strict) for spelling, unit in spellings.items()}
-        if len(spellings) > 1:
+        if key.instead:
+            either.append(_once([*spellings, key.instead], required=strict and key.required))
+        elif len(spellings) > 1:
             either.append(_once(list(spellings), required=strict and key.required))
         elif strict and key.required:
             either.append({"required": list(spellings)})
@@ -155,6 +158,52 @@ def _quantity_forms() -> Schema:
 
 
 _ID: Schema = {"anyOf": [{"type": "string", "pattern": f"^{ID.pattern}$"}, {"type": "integer", "minimum": 0}]}
+_COORDINATE: Schema = {
+    "description": "mm: a number, a dimension, one with a minus, or a list of those that is summed.",
+    "anyOf": [
+        {"type": ["number", "string"]},
+        {"type": "array", "minItems": 1, "items": {"type": ["number", "string"]}},
+    ],
+}
+_PAIR: Schema = {"type": "array", "minItems": 2, "maxItems": 2, "items": _COORDINATE}
+_ARC: Schema = {
+    "type": "object",
+    "additionalProperties": False,
+    "properties": {"arc_to": _PAIR, "centre": _PAIR, "turning": {"enum": ["anticlockwise", "clockwise"]}},
+    "required": ["arc_to", "centre", "turning"],
+}
+_YES: Schema = {"enum": ["no", "yes", False, True]}  # what editors make of no and yes
+_CONDUCTOR: Schema = {
+    "type": "object",
+    "additionalProperties": False,
+    "properties": {
+        "carries": {"description": "What it is wired to.", "enum": list(CARRIES)},
+        "mirrored": {"description": "Whether it has an image below the middle plane, dc above then below.", **_YES},
+        "sheet": {"description": "Whether the outline is a thin sheet with a free edge.", **_YES},
+        "outline": {
+            "description": "Points (r, z), straight or by arcs, back to the first or from axis to axis.",
+            "type": "array",
+            "minItems": 2,
+            "items": {"anyOf": [_PAIR, _ARC]},
+        },
+        "circle": {
+            "description": "Round cross-section.",
+            "type": "object",
+            "additionalProperties": False,
+            "properties": {"centre": _PAIR, "radius": _COORDINATE},
+            "required": ["centre", "radius"],
+        },
+        "rectangle": {
+            "description": "Square-edged cross-section.",
+            "type": "object",
+            "additionalProperties": False,
+            "properties": {"r": _PAIR, "z": _PAIR},
+            "required": ["r", "z"],
+        },
+    },
+    "required": ["carries"],
+    "oneOf": [{"required": [form]} for form in FORMS],
+}
 _REASONS: Schema = {"type": "object", "additionalProperties": {"type": "string", "minLength": 1}}
 _OTHERS: dict[str, Schema] = {
     "text": _TEXT,
@@ -163,5 +212,15 @@ _OTHERS: dict[str, Schema] = {
     "date": {"type": "string", "pattern": _DATE},
     "texts": {"type": "object", "propertyNames": {"pattern": f"^{ID.pattern}$"}, "additionalProperties": _TEXT},
     "names": _REASONS,
+    "dimensions": {
+        "type": ["object", "null"],
+        "propertyNames": {"pattern": f"^{ID.pattern}$"},
+        "additionalProperties": {"$ref": "#/$defs/quantity"},
+    },
+    "conductors": {
+        "type": ["object", "null"],
+        "propertyNames": {"pattern": f"^{ID.pattern}$"},
+        "additionalProperties": _CONDUCTOR,
+    },
     "sessions": {"anyOf": [{"const": "all"}, {"type": "array", "items": _ID, "minItems": 1, "uniqueItems": True}]},
 }

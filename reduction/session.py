@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 
 import numpy as np
 import pandas as pd
 
 from reduction import budget
 from reduction.adjustment import adjust_together
+from reduction.errors import ReductionError
 from reduction.logs import Logs
 from reduction.outcome import Outcome, outcome_of
 from reduction.preparation import prepare
@@ -40,9 +42,23 @@ def reduce_session(campaign: Campaign, session_id: str, logs: Logs) -> SessionRe
     SessionRecord
         Tables with the columns of the results, and the content of session.json.
     """
-    reduced = _solved(campaign, session_id, logs)
-    adjusted, chosen = adjust_session(reduced, campaign.options.adjust)
-    return record_of(outcome_of(campaign, campaign.sessions[session_id], logs, reduced, adjusted, chosen))
+    with _breakdown(f"session {session_id}"):
+        reduced = _solved(campaign, session_id, logs)
+        adjusted, chosen = adjust_session(reduced, campaign.options.adjust)
+        return record_of(outcome_of(campaign, campaign.sessions[session_id], logs, reduced, adjusted, chosen))
+
+
+@contextmanager
+def _breakdown(what: str) -> Iterator[None]:
+    """Say in words that the arithmetic broke down: inputs within their ranges can still be absurd together."""
+    try:
+        yield
+    except (ArithmeticError, np.linalg.LinAlgError) as error:
+        message = (
+            f"{what}: the arithmetic broke down ({error}). Some value or its u is far from what a trap, a particle or "
+            "a meter can have. Look at the settings and the readings for slips of unit or power of ten."
+        )
+        raise ReductionError(message) from error
 
 
 def reduce_campaign(campaign: Campaign, logs: Mapping[str, Logs]) -> dict[str, SessionRecord]:
@@ -60,6 +76,11 @@ def reduce_campaign(campaign: Campaign, logs: Mapping[str, Logs]) -> dict[str, S
     dict
         Session id to its record.
     """
+    with _breakdown("the sessions together"):
+        return _together(campaign, logs)
+
+
+def _together(campaign: Campaign, logs: Mapping[str, Logs]) -> dict[str, SessionRecord]:
     solved = {session: _solved(campaign, session, logs[session]) for session in sorted(logs)}
     chosen = {session: np.flatnonzero(~reduced.open).astype(np.intp) for session, reduced in solved.items()}
     pooled = [session for session in solved if len(chosen[session])]

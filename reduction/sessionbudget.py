@@ -7,7 +7,7 @@ from collections.abc import Mapping, Sequence
 from statistics import median
 from typing import Any
 
-from reduction.limits import GROUPS, shares_of, spread_of
+from reduction.limits import GROUPS, VALUES, shares_of, spread_of
 from reduction.sheets import Sheet, sheet
 from reduction.typeset import NONE, foreign, pair, percent, significant
 from reduction.wording import OWN, RESULTS, counted, input_words
@@ -16,14 +16,6 @@ Row = Mapping[str, Any]
 SMALL = 0.001  # of the variance: inputs below it in every column of a table are gathered in its last row
 SIDE_BY_SIDE = 10  # particles whose shares stand in columns of their own, if their ids are short
 _SHORT = 7
-_VALUES = {
-    "charge_to_mass": ("charge_to_mass_C_per_kg", "u_charge_to_mass_C_per_kg"),
-    "drag_rate": ("drag_rate_per_s", "u_drag_rate_per_s"),
-    "diameter": ("diameter_um", "u_diameter_um"),
-    "mass": ("mass_kg", "u_mass_kg"),
-    "charge": ("charge_C", "u_charge_C"),
-    "surface_charge_density": ("surface_charge_density_C_per_m2", "u_surface_charge_density_C_per_m2"),
-}
 _ONE_TABLE = 12  # columns of shares that fit one table
 
 
@@ -49,7 +41,7 @@ def limits_table(particles: Sequence[Row], budget: Sequence[Row]) -> Sheet | Non
     medians = [shares_of(budget, result)[0] for result in results]
     shown = [key for key in GROUPS if any(abs(one.get(key, 0.0)) >= 0.0005 for one in medians)]
     head = ["Result", "Relative u", *[GROUPS[key][0] for key in shown]]
-    cells = [[title(r) for r in results], [spread_of(particles, *_VALUES[r]) or NONE for r in results]]
+    cells = [[title(r) for r in results], [spread_of(particles, *VALUES[r]) or NONE for r in results]]
     cells += [[percent(one.get(key, math.nan)) for one in medians] for key in shown]
     return sheet(head, cells, "l" + "r" * (len(head) - 1), [1] + [0] * (len(head) - 1))
 

@@ -9,7 +9,8 @@ import numpy as np
 from reduction.budget import Results, results_of
 from reduction.charge import electrons
 from reduction.curves import curves_of
-from reduction.methods import Flags
+from reduction.fieldmap import CORRECTION_U
+from reduction.methods import Array, Flags, surroundings
 from reduction.outcome import CHARGE, DIAMETER, GAMMA, MASS, Outcome, own_sizes
 from reduction.preparation import EXACT
 from reduction.quantity import shorthand
@@ -79,6 +80,7 @@ def facts(outcome: Outcome, sanity: list[tuple[int, str, str]]) -> dict[str, Any
             "adjusted": adjusted[0],
             "adjusted_u": adjusted[1],
         },
+        **_drawn_trap(outcome),
         "masses": _masses(outcome),
         "window": window_record(
             session, outcome.campaign.traps[session.trap], outcome.logs, _median_drag_rate(outcome)
@@ -112,7 +114,7 @@ def _exact_diameters(outcome: Outcome) -> list[list[str]]:
 
 
 def _notes(outcome: Outcome, sanity: list[tuple[int, str, str]]) -> list[str]:
-    notes = []
+    notes = _departure_note(outcome)
     for log, dof in sorted(outcome.reduced.scatter.items()):
         notes.append(
             f"The uncertainty of one reading of {log}.csv comes from its scatter, with {dof:.3g} degrees "
@@ -125,6 +127,46 @@ def _notes(outcome: Outcome, sanity: list[tuple[int, str, str]]) -> list[str]:
     notes += [f"Particle {names[slip.particle]}: {slip.text}." for slip in outcome.reduced.slips]
     notes += [f"Particle {names[index]}: {text}." for index, _, text in sanity]
     return notes
+
+
+def _drawn_trap(outcome: Outcome) -> dict[str, Any]:
+    """Trap constants that follow from a drawing, and how far the field's departure shifts heights; else nothing."""
+    setting = outcome.prepared.setting
+    if setting.field_map is None:
+        return {}
+    rows: dict[str, Array] = {"estimate": np.zeros((1, 1, len(setting.uncertain)))}
+    if not outcome.alone:
+        rows["adjusted"] = outcome.adjusted.xi[None]
+    found = {key: setting.field_map.constants(surroundings(setting, xi).values) for key, xi in rows.items()}
+    keys = ("dc_field_per_volt_per_m", "ac_gradient_per_volt_per_m2")
+    constants = {
+        name: {key: float(both[which].flat[0]) for key, both in found.items()} for which, name in enumerate(keys)
+    }
+    height = outcome.adjusted.model.logs.get("height")
+    shift = np.abs(height.departure) if height is not None and len(height) else np.zeros(1)
+    return {
+        "trap_constants": constants,
+        "field_departure": {
+            "treated": outcome.campaign.traps[outcome.session.trap].drawing.departure,  # type: ignore[union-attr]
+            "largest_shift_mm": float(shift.max()) * 1e3,
+            "median_shift_mm": float(np.median(shift)) * 1e3,
+        },
+    }
+
+
+def _departure_note(outcome: Outcome) -> list[str]:
+    drawn = _drawn_trap(outcome).get("field_departure")
+    if not drawn or not drawn["largest_shift_mm"]:
+        return []
+    made = {
+        "component": "heights are not corrected for it; it enters as a component",
+        "corrected": f"heights are corrected for it to first order, with {100 * CORRECTION_U:g} % of the correction as "
+        "its uncertainty",
+    }[drawn["treated"]]
+    return [
+        f"The field's departure from the linear one shifts heights by up to {drawn['largest_shift_mm']:.2g} mm, half "
+        f"of them by {drawn['median_shift_mm']:.2g} mm or less; {made}."
+    ]
 
 
 def _strain(outcome: Outcome) -> dict[str, Any] | None:

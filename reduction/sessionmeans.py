@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -65,8 +66,7 @@ class Sample:
     @property
     def u(self) -> Array:
         """Standard uncertainty of each value."""
-        squares: Array = np.asarray(self.shared.multiply(self.shared).sum(axis=1)).ravel()
-        return np.asarray(np.sqrt(self.own + squares))
+        return np.asarray(np.sqrt(self.own + _squares(self.shared)))
 
     def take(self, chosen: NDArray[np.bool_]) -> Sample:
         """The chosen particles only."""
@@ -87,9 +87,14 @@ class Cells:
     squares: Array  # sum of squares about the mean
     noise: Array  # what measurement error makes of that sum on average
     own: Array  # variance of the mean from what is each particle's alone
-    shared: Array  # (cells, inputs) components of the mean by shared input
+    shared: sparse.csr_array  # (cells, inputs) components of the mean by shared input
     names: tuple[str, ...] = ()
     scopes: tuple[str, ...] = ()
+
+    @cached_property
+    def shared_variance(self) -> Array:
+        """Variance of each mean by the shared inputs."""
+        return _squares(self.shared)
 
     def of(self, group: str) -> NDArray[np.intp]:
         """Places of the cells of one group."""
@@ -196,6 +201,11 @@ def _components(
     return own, shared, listed, tuple(str(scope_of[name]) for name in listed)
 
 
+def _squares(shared: sparse.csr_array) -> Array:
+    """Sum of squares of each row."""
+    return np.asarray(shared.multiply(shared).sum(axis=1), dtype=float).ravel()
+
+
 def cells_of(sample: Sample) -> Cells:
     """Unweighted means by session and group, with their covariance.
 
@@ -210,9 +220,9 @@ def cells_of(sample: Sample) -> Cells:
     mean = gathering @ sample.value / np.maximum(count, 1.0)
     squares = gathering @ (sample.value - mean[at]) ** 2
     own = gathering @ sample.own
-    shared = (gathering @ sample.shared).toarray() / np.maximum(count, 1.0)[:, None]
-    scattered = gathering @ np.asarray(sample.shared.multiply(sample.shared).sum(axis=1)).ravel()
-    noise = own * (1.0 - 1.0 / count) + scattered - count * (shared**2).sum(axis=1)
+    shared = sparse.csr_array((gathering @ sample.shared).multiply(1.0 / np.maximum(count, 1.0)[:, None]))
+    scattered = gathering @ _squares(sample.shared)
+    noise = own * (1.0 - 1.0 / count) + scattered - count * _squares(shared)
     return Cells(
         tuple(session for _, session in places), tuple(group for group, _ in places), count, mean, squares,
         np.maximum(noise, 0.0), own / count**2, shared, sample.names, sample.scopes,

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -56,9 +56,14 @@ _SETTINGS = (
 )
 
 
-def content(folder: Path, *, digest: str, title: str = "") -> tuple[dict[str, Any], list[figurestyle.Drawing]]:
-    """Everything the template sets, and the figures with their numbers, of one record folder."""
-    facts = read_json(folder / records.FACTS)
+def content(
+    folder: Path, *, digest: str, title: str = "", hidden: Collection[str] = ()
+) -> tuple[dict[str, Any], list[figurestyle.Drawing]]:
+    """Everything the template sets, and the figures with their numbers, of one record folder.
+
+    `hidden` names facts that are not told, where whoever reads it must not meet people's names.
+    """
+    facts = {key: value for key, value in read_json(folder / records.FACTS).items() if key not in hidden}
     held = {name: tables.read_table(folder / f"{name}.csv") for name in records.PIECES if name != "components"}
     session = str(facts["session"])
     particles = rows_of(held["particles"])

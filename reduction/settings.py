@@ -2,17 +2,24 @@
 
 from __future__ import annotations
 
+import math
 import os
 from collections.abc import Collection, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
+from reduction import digests
 from reduction.contract import CAMPAIGN, COMPARE, ID, ID_WORDS, SPECIES, TRAP, Key
+from reduction.drawing import Drawing
+from reduction.drawingfile import read_drawing
 from reduction.entries import Entries, filled, read_entries, require, value_of
 from reduction.errors import Fault, Faults, nearest
+from reduction.fieldmap import FieldMap
 from reduction.quantity import Quantity
 from reduction.sessionfile import Air, Session, Site, read_session
+from reduction.trapconstants import TrapConstants
+from reduction.trapsolution import constants_of
 from reduction.yamlfile import read_yaml
 
 __all__ = ["Air", "Campaign", "Compare", "Options", "Session", "Site", "Species", "Trap", "load_campaign"]
@@ -29,6 +36,13 @@ class Trap:
     dc_polarity: int  # 1 or -1
     usable_height: float | None  # [m]
     source: str
+    drawing: Drawing | None = None  # of the electrodes, in place of the two constants
+    constants: TrapConstants | None = None  # computed from the drawing
+
+    @property
+    def field_map(self) -> FieldMap | None:
+        """How the constants follow from the dimensions, where the electrodes are drawn."""
+        return self.constants.field_map if self.constants else None
 
 
 @dataclass(frozen=True)
@@ -82,7 +96,9 @@ class Campaign:
     sessions: dict[str, Session]
 
 
-def load_campaign(folder: Path | str, *, faults: Faults, only: Collection[str] | None = None) -> Campaign:
+def load_campaign(
+    folder: Path | str, *, faults: Faults, only: Collection[str] | None = None, keep: Path | None = None
+) -> Campaign:
     """Read the settings of a campaign; every fault goes to `faults`.
 
     Entries of `every_session` hold where a session does not give them itself: entry by entry within `air`, `gain`,
@@ -96,6 +112,9 @@ def load_campaign(folder: Path | str, *, faults: Faults, only: Collection[str] |
         Collector; with `when_a_session_fails: leave_out` those of a session go to `Campaign.faulty` instead.
     only : collection of str, optional
         Read these sessions only.
+    keep : Path, optional
+        Folder of trap constants computed before from drawings, to be read and added to. The constants of a trap whose
+        electrodes are drawn are computed if a session that is read names it; one that none names is left out.
 
     Returns
     -------
@@ -125,7 +144,11 @@ def load_campaign(folder: Path | str, *, faults: Faults, only: Collection[str] |
     _check_groups(options, sessions, chosen, faults)
     kept = tuple(id_ for id_ in ids if id_ not in faulty)
     title = value_of(chosen, "title", "")
-    clean_traps = {id_: trap for id_, trap in traps.items() if trap}
+    named = {session.trap for session in sessions.values()}
+    clean_traps = {id_: trap for id_, trap in traps.items() if trap and (trap.drawing is None or id_ in named)}
+    for id_, trap in clean_traps.items():
+        if trap.drawing is not None:
+            clean_traps[id_] = solved(trap, folder / "traps" / f"{id_}.yaml", f"traps/{id_}.yaml", keep, faults=faults)
     clean_species = {id_: kind for id_, kind in species.items() if kind}
     return Campaign(folder, title, kept, leave_out, faulty, options, clean_traps, clean_species, sessions)
 
@@ -182,7 +205,7 @@ def _folder_of(folder: Path, name: str, keys: tuple[Key, ...], make: Any, faults
         if mapping is not None:
             entries = read_entries(mapping, keys, label, faults=own)
             require(entries, keys, label, faults=own, advice="Add the key.")
-        found[path.stem] = make(path.stem, filled(entries)) if mapping is not None and not len(own) else None
+        found[path.stem] = make(path.stem, filled(entries), label, own) if mapping is not None else None
         faults.extend(own)
     _check_case(found, name, faults)
     return found
@@ -204,23 +227,78 @@ def _check_case(names: Collection[str], folder: str, faults: Faults) -> None:
         seen[name.casefold()] = name
 
 
-def _trap(id_: str, entries: Entries) -> Trap:
+def _trap(id_: str, entries: Entries, path: str, faults: Faults) -> Trap | None:
+    drawing = None
+    if "electrodes" in entries:
+        for stem in ("dc_field_per_volt", "ac_gradient_per_volt"):
+            if stem in entries:
+                faults.add(
+                    path,
+                    line=entries[stem].line,
+                    column=stem,
+                    found=f"{stem} beside electrodes",
+                    expected="the constants, or the electrodes they follow from",
+                    advice="Delete one or the other.",
+                )
+        if entries["electrodes"].value is not None:
+            drawing = read_drawing(entries, path, faults=faults)
+    if len(faults):
+        return None
     return Trap(
         id_,
-        value_of(entries, "dc_field_per_volt"),
-        value_of(entries, "ac_gradient_per_volt"),
+        value_of(entries, "dc_field_per_volt", Quantity(math.nan)),  # nan until it is computed
+        value_of(entries, "ac_gradient_per_volt", Quantity(math.nan) if drawing else None),
         value_of(entries, "stray_field"),
         int(value_of(entries, "dc_polarity")),
         value_of(entries, "usable_height"),
         value_of(entries, "source", ""),
+        drawing,
     )
 
 
-def _species(id_: str, entries: Entries) -> Species:
+def solved(trap: Trap, file: Path, path: str, keep: Path | None, *, faults: Faults) -> Trap:
+    """The trap with the constants that its drawing makes, in place of the stated ones, and its usable height.
+
+    Where they cannot be computed a fault says why, and the constants stay nan.
+    """
+    drawing = trap.drawing
+    assert drawing is not None
+    name = digests.drawing_digest(digests.content(file))
+    constants = constants_of(drawing, path, faults=faults, keep=keep, name=name)
+    if constants is None:
+        return trap
+    dc_field, ac_gradient = constants.quantities()
+    usable = constants.usable_height if trap.usable_height is None else trap.usable_height
+    return replace(
+        trap,
+        dc_field_per_volt=dc_field,
+        ac_gradient_per_volt=ac_gradient,
+        usable_height=usable,
+        constants=constants,
+    )
+
+
+def load_trap(file: Path, *, faults: Faults, keep: Path | None = None) -> Trap | None:
+    """One trap by itself, its constants computed if its electrodes are drawn; None, with the faults, if not fit."""
+    mapping = read_yaml(file, file.name, faults=faults)
+    if mapping is None:
+        return None
+    entries = read_entries(mapping, TRAP, file.name, faults=faults)
+    require(entries, TRAP, file.name, faults=faults, advice="Add the key.")
+    trap = _trap(file.stem, filled(entries), file.name, faults)
+    if trap is not None and trap.drawing is not None:
+        trap = solved(trap, file, file.name, keep, faults=faults)
+    return None if len(faults) else trap
+
+
+def _species(id_: str, entries: Entries, path: str, faults: Faults) -> Species | None:
+    if len(faults):
+        return None
     stems = ("shape_factor", "shape_factor_spread", "diameter", "diameter_spread", "density")
     return Species(id_, *(value_of(entries, stem) for stem in stems))
 
 
+_UNKNOWN_SHOWN = 20  # sessions named that are not there
 # A file with one of these endings beside the session folders is a log or session gone astray; any other is ignored.
 _STRAY_ENDINGS = (".csv", ".yaml", ".yml", ".zip")
 
@@ -231,29 +309,38 @@ def _session_ids(folder: Path, chosen: Entries, faults: Faults) -> tuple[str, ..
         return ()
     listed = _listed(folder / "sessions")
     there = [path.name for path in listed if os.path.isdir(path)]
+    known = set(there)
     for path in listed:
-        if path.name not in there and path.suffix.lower() in _STRAY_ENDINGS:
+        if path.is_symlink() and not path.exists():
+            advice = "Put the folder in its place, or delete the link."
+            faults.add(f"sessions/{path.name}", found="a link that leads nowhere", expected="a folder", advice=advice)
+        elif path.name not in known and path.suffix.lower() in _STRAY_ENDINGS:
             advice = "Move it into the folder of its session."
             faults.add(f"sessions/{path.name}", found="a file", expected="one folder per session", advice=advice)
     asked = value_of(chosen, "sessions", ())
     leave_out = value_of(chosen, "leave_out", {})
     for stem, names in (("sessions", asked), ("leave_out", leave_out)):
-        for name in names:
-            if name not in there:
-                faults.add(
-                    "campaign.yaml",
-                    line=chosen[stem].line,
-                    column=stem,
-                    found=f"{name}, which has no folder in sessions/",
-                    expected="sessions that are there",
-                    advice=nearest(name, there) if there else "Make a folder in sessions/ for each session.",
-                )
-    kept = [name for name in there if (not asked or name in asked) and name not in leave_out]
+        strangers = [name for name in names if name not in known]
+        for name in strangers[:_UNKNOWN_SHOWN]:
+            faults.add(
+                "campaign.yaml",
+                line=chosen[stem].line,
+                column=stem,
+                found=f"{name}, which has no folder in sessions/",
+                expected="sessions that are there",
+                advice=nearest(name, there) if there else "Make a folder in sessions/ for each session.",
+            )
+        if len(strangers) > _UNKNOWN_SHOWN:
+            found = f"{len(strangers) - _UNKNOWN_SHOWN} more that have no folder in sessions/"
+            line = chosen[stem].line
+            faults.add("campaign.yaml", line=line, column=stem, found=found, expected="sessions that are there")
+    wanted = set(asked)
+    kept = [name for name in there if (not wanted or name in wanted) and name not in leave_out]
     for name in kept:
         if not ID.fullmatch(name):
             faults.add(f"sessions/{name}", found=f"the name {name}", expected=ID_WORDS, advice="Rename the folder.")
     _check_case(kept, "sessions", faults)
-    if not kept and set(asked) <= set(there):
+    if not kept and wanted <= known:
         faults.add("sessions", found="no session", expected="a folder for each session", advice="Add a session.")
     return tuple(name for name in kept if ID.fullmatch(name))
 

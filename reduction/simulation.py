@@ -123,7 +123,7 @@ def simulate_campaign(folder: Path, *, plan: Plan, seed: int) -> Path:
         place = folder / "sessions" / session
         date = FIRST_DAY + datetime.timedelta(days=2 * number)
         write_session(folder, plan, number, one.setting, habits, habits.logs or regime.logs, date.isoformat())
-        write_trap(folder, plan.trap_of(number), regime)
+        write_trap(folder, plan.trap_of(number), regime, plan.drawings.get(plan.trap_of(number), ""))
         write_species(folder, regime)
         for log in one.logs.values():
             write_log(place / f"{log.name}.csv", log, one.particles.ids, habits, regime.reading["dc_voltage_V"])
@@ -131,14 +131,15 @@ def simulate_campaign(folder: Path, *, plan: Plan, seed: int) -> Path:
         write_lost(place / "lost.csv", regime, habits, seed, session)
         gross = [name for log in one.logs.values() for name in log.gross]
         rows += truth_rows(session, regime.species, plan.material_of(number), regime.name, one.particles, gross)
-    truth = _beside(folder, "truth")
+    truth = beside(folder, "truth")
     write_truth(truth, rows)
-    write_true_inputs(_beside(folder, "truth_inputs"), taken.rows())
-    write_true_groups(_beside(folder, "truth_groups"), _groups(plan, seed))
+    write_true_inputs(beside(folder, "truth_inputs"), taken.rows())
+    write_true_groups(beside(folder, "truth_groups"), _groups(plan, seed))
     return truth
 
 
-def _beside(folder: Path, what: str) -> Path:
+def beside(folder: Path, what: str) -> Path:
+    """Table of the truth that lies beside a simulated campaign."""
     return folder.with_name(f"{folder.name}.{what}.csv")
 
 

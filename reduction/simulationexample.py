@@ -7,6 +7,32 @@ from dataclasses import replace
 from reduction.simulationplan import Habits, Plan, Visit
 
 EXAMPLE_SEED = 7
+LANTERN_B = """\
+# Measured, in the story, with a caliper and a photograph, in mm; the constants of the trap follow from it.
+electrodes:
+  dc_applied: both_plates
+  dimensions_mm:
+    ring_radius: 11.30(6)            # of the middle of the wire, from a photograph along the axis
+    wire_radius: {value: 1.00, half_width: 0.02, shape: rectangular}   # the wire's own tolerance
+    plate_height: 8.00(4)            # half the clear distance between the plates, with gauge blocks
+    plate_thickness: 2.00(2)
+    hole_radius: 1.00(3)             # particles come in from above, light from below
+    plate_radius: 14.0(1)
+    can_radius: 30.0(5)
+    can_height: 40.0(5)
+  conductors:
+    ring:
+      carries: drive
+      circle: {centre: [ring_radius, 0], radius: wire_radius}
+    plate:
+      carries: dc_above
+      mirrored: yes                  # the lower plate, which carries dc_below
+      rectangle: {r: [hole_radius, plate_radius], z: [plate_height, [plate_height, plate_thickness]]}
+    can:
+      carries: ground
+      outline: [[0, can_height], [can_radius, can_height], [can_radius, -can_height], [0, -can_height]]
+"""
+"""Trap `lantern-b`, wired the other way than `lantern-a`: its constants agree with those the regime states."""
 
 
 def example_plan() -> Plan:
@@ -28,6 +54,7 @@ def example_plan() -> Plan:
             Visit("room_air_light", "nylon", trap=1),
             Visit("room_air_light", "wool", trap=1),
         ),
+        drawings={"lantern-b": LANTERN_B},
         options={"compare": "{quantity: surface_charge_density, by: charged_with}"},
         habits=usual,
         differing={

@@ -115,6 +115,13 @@ def write_log(path: Path, log: Log, ids: Sequence[str], habits: Habits, u_dc_vol
     table.write(path)
 
 
+def read_diameters(particles: Particles, setting: Setting, habits: Habits, seed: int, session: str) -> Array:
+    """Diameters [m] of the particles as read under a microscope, before the gain."""
+    noise = [float(stream(seed, "noise", session, one, "diameter").standard_normal()) for one in particles.ids]
+    u = 1e-6 * habits.u_diameter_um
+    return np.asarray(particles.diameter / setting.gain["diameter"] + u * habits.scatter * np.array(noise))
+
+
 def write_particles(
     path: Path, particles: Particles, setting: Setting, habits: Habits, seed: int, session: str
 ) -> None:
@@ -124,8 +131,7 @@ def write_particles(
     table, sigma = Table(habits), 1e-6 * habits.u_diameter_um
     table.texts("particle", particles.ids)
     if habits.own_diameters:
-        noise = [float(stream(seed, "noise", session, one, "diameter").standard_normal()) for one in particles.ids]
-        shown = particles.diameter / setting.gain["diameter"] + sigma * habits.scatter * np.array(noise)
+        shown = read_diameters(particles, setting, habits, seed, session)
         table.numbers("diameter", shown, sigma / 5.0)
         table.numbers("u_diameter", np.full(len(shown), sigma), sigma / 10.0, kind="diameter")
     if habits.excluded_particles:
@@ -168,11 +174,14 @@ def write_campaign(folder: Path, plan: Plan) -> None:
     _lines(folder / "campaign.yaml", [*lines, "every_session:", f"  site: {_flow(plan.site)}"])
 
 
-def write_trap(folder: Path, trap: str, regime: Regime) -> None:
-    """Write traps/<trap>.yaml."""
-    _lines(folder / "traps" / f"{trap}.yaml", [
+def write_trap(folder: Path, trap: str, regime: Regime, drawing: str = "") -> None:
+    """Write traps/<trap>.yaml, its two constants stated or, with a drawing, left to the program."""
+    stated = [
         f"dc_field_per_volt_per_m: {regime.dc_field_per_volt_per_m}",
         f"ac_gradient_per_volt_per_m2: {regime.ac_gradient_per_volt_per_m2}",
+    ]
+    _lines(folder / "traps" / f"{trap}.yaml", [
+        *(drawing.splitlines() if drawing else stated),
         f"stray_field_V_per_m: {regime.stray_field_V_per_m}",
         f"dc_polarity: {polarity_of(trap)}",
         f"usable_height_mm: {regime.usable_height_mm}",
@@ -253,7 +262,7 @@ def truth_rows(
 
 def write_truth(path: Path, rows: Iterable[Sequence[str]]) -> None:
     """Write the table of true particles."""
-    _plain(path, TRUTH, rows)
+    write_plain(path, TRUTH, rows)
 
 
 def write_true_inputs(path: Path, inputs: Sequence[TrueInput]) -> None:
@@ -265,16 +274,17 @@ def write_true_inputs(path: Path, inputs: Sequence[TrueInput]) -> None:
         for one in same[:1] if alike else same:
             numbers = [repr(float(value)) for value in (one.true, one.estimate, one.u)]
             rows[name, one.session] = [name, "" if alike else one.session, *numbers, one.unit]
-    _plain(path, ("input", "session", "true_value", "estimate", "u", "unit"), rows.values())
+    write_plain(path, ("input", "session", "true_value", "estimate", "u", "unit"), rows.values())
 
 
 def write_true_groups(path: Path, rows: Iterable[Sequence[str]]) -> None:
     """Write what the charges were drawn from: median surface charge density, spreads of its logarithm."""
     heads = ("regime", "charged_with", "surface_charge_density_C_per_m2", "between_sessions", "between_particles")
-    _plain(path, heads, rows)
+    write_plain(path, heads, rows)
 
 
-def _plain(path: Path, heads: Sequence[str], rows: Iterable[Sequence[str]]) -> None:
+def write_plain(path: Path, heads: Sequence[str], rows: Iterable[Sequence[str]]) -> None:
+    """Write a table for programs: commas, no comment."""
     out = io.StringIO()
     writer = csv.writer(out, lineterminator="\n")
     writer.writerow(heads)

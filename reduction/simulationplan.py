@@ -75,8 +75,22 @@ REGIMES: Mapping[str, Regime] = {
             travel_mm=0.10, charge_scale=1.3, logs=("balance", "secular"),
             reading={"balance_voltage_V": 0.03, "dc_voltage_V": 0.01, "height_mm": 0.002, "secular_frequency_Hz": 0.05},
         ),
+        # For a course: large beads in room air, so that every log can be taken, and a drive that is not of the mains.
+        Regime(
+            name="teaching", trap="cradle", dc_field_per_volt_per_m="94.0(12)",
+            ac_gradient_per_volt_per_m2="3.15(4)e4", stray_field_V_per_m="0(60)", u_offset_V=0.4,
+            usable_height_mm=0.5, species="dense-60", shape_factor="1.000(5)", shape_factor_spread=0.0,
+            density_kg_per_m3="2480(20)", diameter_um="60.5(8)", diameter_spread_um=1.2,
+            temperature_degC=(19.0, 24.0, 0.3), pressure_hPa=(990.0, 1025.0, 5e-4),
+            relative_humidity_percent=(25.0, 55.0, 5.0),
+            drive_voltage_peak_V=4500.0, drive_frequency_Hz=58.0, balance_voltage_V=(60.0, 900.0), travel_mm=0.25,
+            charge_scale=2.2, logs=("balance", "height", "secular"),
+            reading={"balance_voltage_V": 0.4, "dc_voltage_V": 0.03, "height_mm": 0.005, "secular_frequency_Hz": 0.03},
+        ),
     )
 }  # fmt: skip
+RESEARCH = ("room_air_light", "room_air_dense", "low_pressure")
+"""Regimes of a research campaign."""
 
 # Invented: mean surface charge density [C/m2] that a small bead takes from a surface of the material.
 MATERIALS: Mapping[str, float] = {"PTFE": 4.4e-6, "glass": -3.2e-6, "nylon": -4.6e-6, "wool": -2.1e-6}
@@ -159,11 +173,13 @@ class Plan:
     title: str = "Simulated campaign (invented data)"
     drag: str = "unsteady"
     options: Mapping[str, str] = field(default_factory=dict)  # further lines of campaign.yaml
+    drawings: Mapping[str, str] = field(default_factory=dict)  # trap: its electrodes as YAML, in place of the constants
     site: Mapping[str, str] = field(default_factory=lambda: {"latitude_deg": "51.20(2)", "elevation_m": "35(5)"})
+    prefix: str = "s"  # of the sessions' ids
 
     def session_ids(self) -> tuple[str, ...]:
         """Ids s001, s002, ... ; they don't depend on how many there are."""
-        return tuple(f"s{number:03d}" for number in range(1, self.sessions + 1))
+        return tuple(f"{self.prefix}{number:03d}" for number in range(1, self.sessions + 1))
 
     def particle_ids(self) -> tuple[str, ...]:
         """Ids p01, p02, ... ."""
@@ -196,10 +212,10 @@ class Plan:
 
 PLANS: Mapping[str, Plan] = {
     **{name: Plan(regimes=(name,)) for name in REGIMES},
-    "all": Plan(regimes=tuple(REGIMES), sessions=12),
+    "all": Plan(regimes=RESEARCH, sessions=12),
     "drifting": Plan(habits=Habits(charge_drift_per_s=-3e-5)),
     "untidy": Plan(
-        regimes=tuple(REGIMES),
+        regimes=RESEARCH,
         sessions=6,
         habits=Habits(outliers=0.02, scatter=1.3, lost=2, dialect="semicolon", drive_voltage="rms"),
     ),

@@ -12,13 +12,16 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from reduction import digests, resultsfolder
-from reduction.batches import STATE, Plan, make_plan, record_folder
+from reduction.batches import STATE, Plan, campaign_digest, constants_folder, make_plan, record_folder
 from reduction.errors import Faults, InputError, ReductionError, ResultsError
+from reduction.reasons import reasons
 from reduction.records import FACTS, SessionRecord
+from reduction.resultfiles import SUMS
 from reduction.rundiff import FILES
 from reduction.wholefile import read_json, whole_file, write_json
 
 if TYPE_CHECKING:
+    from reduction.markingfiles import Scheme
     from reduction.settings import Campaign
 
 LOG = logging.getLogger(__name__)
@@ -46,17 +49,23 @@ def check(campaign: Path, results: Path | None = None) -> str:
     InputError
         If anything stops the campaign from being reduced; its message lists every fault.
     """
-    from reduction.check import check_campaign, faults_text, report_text
+    from reduction.check import check_campaign, check_marking, faults_text, report_text
 
-    found, logs, faults = check_campaign(campaign)
-    text = report_text(found, logs, faults)
+    keep = None if results is None else constants_folder(results)
+    found, logs, faults = check_campaign(campaign, keep=keep)
+    marking = check_marking(found, logs, faults)
+    text = report_text(found, logs, faults, marking)
     if len(faults):
         raise CheckError(text, faults)
     if results is not None:
         faulty = {name: faults_text(listed) for name, listed in found.faulty.items()}
-        write_json(results / STATE / "verdict.json", {"faulty": faulty, "digest": Plan.load(results).campaign})
+        unmarked = {name: faults_text(listed) for name, listed in marking.faulty.items()} if marking else {}
+        verdict = {"faulty": faulty, "unmarked": unmarked, "digest": Plan.load(results).campaign}
+        write_json(results / STATE / "verdict.json", verdict)
         left = [f"session {name}: left out for its faults\n{told}" for name, told in sorted(faulty.items())]
-        text = "\n".join([*left, text.splitlines()[-1]])
+        (results / SUMS).unlink(missing_ok=True)  # until the run is finished, the results are no finished run's
+        left += [f"bench {name}: not marked for its faults\n{told}" for name, told in sorted(unmarked.items())]
+        text = "\n".join([*left, text.splitlines()[-1], *reasons(campaign, results, Plan.load(results))])
     return text
 
 
@@ -72,11 +81,16 @@ class CheckError(InputError):
 
 
 def _faulty(campaign: Path, results: Path, made: Plan) -> dict[str, str]:
-    """Sessions the check has left out of this run, and why; checked again where no check of these files is noted."""
+    """Sessions the check has left out of this run, and why."""
+    return dict(_verdict(campaign, results, made)["faulty"])
+
+
+def _verdict(campaign: Path, results: Path, made: Plan) -> dict[str, dict[str, str]]:
+    """What the check found; checked again where no check of these files is noted."""
     path = results / STATE / "verdict.json"
     if not path.is_file() or read_json(path)["digest"] != made.campaign:
         check(campaign, results)
-    return dict(read_json(path)["faulty"])
+    return {name: value for name, value in read_json(path).items() if name != "digest"}
 
 
 def reduce(campaign: Path, results: Path, batch: str) -> None:
@@ -88,7 +102,7 @@ def reduce(campaign: Path, results: Path, batch: str) -> None:
     failed: dict[str, str] = {}
     if todo:
         faulty = _faulty(campaign, results, made)
-        settings = _campaign(campaign, todo)
+        settings = _campaign(campaign, todo, results)
         for name in todo:
             LOG.info("session %s", name)
             try:
@@ -105,10 +119,10 @@ def reduce(campaign: Path, results: Path, batch: str) -> None:
     tell(f"reduce {_span(names)}: {len(names)} sessions, {len(todo)} of them anew")
 
 
-def _campaign(folder: Path, sessions: Sequence[str]) -> Campaign:
+def _campaign(folder: Path, sessions: Sequence[str], results: Path) -> Campaign:
     from reduction.settings import load_campaign
 
-    return load_campaign(folder, faults=Faults(), only=sessions)
+    return load_campaign(folder, faults=Faults(), only=sessions, keep=constants_folder(results))
 
 
 def _reduced(settings: Campaign, session: str) -> SessionRecord:
@@ -133,13 +147,20 @@ def _left_out(session: str, reason: str) -> SessionRecord:
 
 def _unchanged(campaign: Path, made: Plan, names: Sequence[str], fresh: Sequence[Path]) -> None:
     """Refuse, and forget, records made while their inputs were being edited."""
-    now = digests.session_inputs(campaign, names) if fresh else made.inputs
-    edited = [name for name in names if now[name] != made.inputs[name]]
+    edited = _edited(campaign, made, names) if fresh else []
     if edited:
         for folder in fresh:
             shutil.rmtree(folder, ignore_errors=True)
-        message = f"edited while the run was going on: {', '.join(edited)}. Start the run again."
-        raise ResultsError(message)
+        raise _edited_meanwhile(", ".join(edited))
+
+
+def _edited(campaign: Path, made: Plan, names: Sequence[str]) -> list[str]:
+    now = digests.session_inputs(campaign, names)
+    return [name for name in names if now[name] != made.inputs[name]]
+
+
+def _edited_meanwhile(what: str) -> ResultsError:
+    return ResultsError(f"edited while the run was going on: {what}. Start the run again.")
 
 
 def adjust(campaign: Path, results: Path) -> None:
@@ -153,7 +174,7 @@ def adjust(campaign: Path, results: Path) -> None:
     if fresh:
         faulty = _faulty(campaign, results, made)
         taken = [name for name in folders if name not in faulty]
-        settings = _campaign(campaign, taken)
+        settings = _campaign(campaign, taken, results)
         logs = {name: read_logs(campaign, settings.sessions[name], faults=Faults()) for name in taken}
         records = reduce_campaign(settings, logs)
         records |= {name: _left_out(name, text) for name, text in faulty.items()}
@@ -198,9 +219,11 @@ def tables(campaign: Path, results: Path) -> None:
 
     made = Plan.load(results)
     folders = dict(made.records(results))
+    settings, inputs = _campaign(campaign, [], results), digests.input_digests(campaign)
+    if campaign_digest(campaign, inputs, made.code) != made.campaign:
+        raise _edited_meanwhile(", ".join(_edited(campaign, made, list(folders))) or "files of the campaign")
     gather(list(folders.values()), results)
-    settings = _campaign(campaign, [])
-    write_json(results / "run.json", run_statement(settings, made, results))
+    write_json(results / "run.json", run_statement(settings, made, results, inputs))
     tell(f"tables: {len(folders)} sessions")
 
 
@@ -215,13 +238,139 @@ def comparison(results: Path) -> None:
 
 
 def report(results: Path) -> None:
-    """Draw the campaign's report."""
-    from reduction.report import campaign_pdf
+    """Draw the campaign's report, to print and for a screen."""
+    from reduction.report import campaign_pages
 
     made = Plan.load(results)
     records = dict(made.records(results))
-    campaign_pdf(results, records, results / "report.pdf", digest=made.campaign, title=made.title)
+    traps = {name: constants_folder(results) / f"{drawing}.json" for name, drawing in made.drawings.items()}
+    campaign_pages(results, records, digest=made.campaign, title=made.title, traps=traps)
     tell(f"report: {len(made.sessions)} sessions")
+
+
+def mark(campaign: Path, results: Path, batch: str) -> None:
+    """Mark the benches of one batch, each to a file; those whose file is there already are passed over."""
+    made = Plan.load(results)
+    names = made.batches[batch]
+    files = {name: resultsfolder.marks_file(results, name, made.marks[name]) for name in names}
+    todo = [name for name in names if not files[name].is_file()]
+    if todo:
+        from reduction.markedbench import mark_benches
+        from reduction.marking import to_record
+
+        verdict = _verdict(campaign, results, made)
+        reasons = verdict["faulty"] | verdict["unmarked"]
+        records = {name: record_folder(results, name, made.record_name(name)) for name in todo}
+        for marks in mark_benches(_campaign(campaign, todo, results), records, reasons):
+            files[marks.session].parent.mkdir(parents=True, exist_ok=True)
+            write_json(files[marks.session], to_record(marks))
+        _unmarked_where_edited(campaign, made, [files[name] for name in todo])
+    write_json(_note(results, "marked", batch), {"digest": made.marks_digest(batch), "sessions": names})
+    tell(f"mark {_span(names)}: {len(names)} benches, {len(todo)} of them anew")
+
+
+def _unmarked_where_edited(campaign: Path, made: Plan, fresh: Sequence[Path]) -> None:
+    """Refuse, and forget, marks made while their inputs were being edited."""
+    if digests.mark_inputs(campaign, made.sessions) != made.marks:
+        for path in fresh:
+            path.unlink(missing_ok=True)
+        message = "files of marking were edited while the run was going on. Start the run again."
+        raise ResultsError(message)
+
+
+def mark_sheet(campaign: Path, results: Path) -> None:
+    """Put the mark sheet together, the benches that are not marked first."""
+    from reduction.marking import from_record
+    from reduction.markingfiles import read_marking
+    from reduction.marksheet import STAFF, write_people, write_sheet
+
+    made = Plan.load(results)
+    files = read_marking(campaign, dict.fromkeys(made.sessions), faults=Faults(), leave_out=True)
+    if files is None:
+        message = "the scheme was edited while the run was going on. Start the run again."
+        raise ResultsError(message)
+    paths = [resultsfolder.marks_file(results, name, own) for name, own in sorted(made.marks.items())]
+    benches = [from_record(read_json(path)) for path in paths]
+    unmarked = _verdict(campaign, results, made)["unmarked"]
+    unknown = {name: text for name, text in unmarked.items() if name not in made.marks}
+    write_sheet(results / STAFF, files.scheme, benches, unknown)
+    write_people(results / STAFF, files.register)
+    tell(f"mark_sheet: {len(benches)} benches")
+
+
+def bench_reports(campaign: Path, results: Path, batch: str) -> None:
+    """Draw the feedback of the benches of one batch; what is there already is passed over."""
+    made = Plan.load(results)
+    names = made.batches[batch]
+    pages = {name: resultsfolder.bench_page(results, name, made.bench_page_name(name)) for name in names}
+    todo = [name for name in names if not pages[name].is_file()]
+    if todo:
+        from reduction.markingpages import bench_pdf
+        from reduction.markrecord import from_record
+
+        shown = _scheme(campaign).show_reduction
+        for name in todo:
+            LOG.info("bench %s", name)
+            marks = from_record(read_json(resultsfolder.marks_file(results, name, made.marks[name])))
+            folder = _record_alone(campaign, results, made, name) if shown else None
+            folder = folder or record_folder(results, name, made.record_name(name))
+            pages[name].parent.mkdir(parents=True, exist_ok=True)
+            bench_pdf(marks, folder, pages[name], digest=pages[name].stem, title=made.title, show_reduction=shown)
+    note = {"digest": resultsfolder.bench_pages_digest(made, batch), "sessions": names}
+    write_json(_note(results, "feedback_drawn", batch), note)
+    tell(f"bench_reports {_span(names)}: {len(names)} benches, {len(todo)} of them anew")
+
+
+def _record_alone(campaign: Path, results: Path, made: Plan, session: str) -> Path | None:
+    """Record of a bench adjusted by itself, where that of the campaign is not: no bench may read of the others."""
+    if not made.together:
+        return None
+    folder = record_folder(results, session, made.sessions[session])
+    if not folder.is_dir():
+        from reduction.markedbench import within_the_bench
+
+        faulty = _faulty(campaign, results, made)
+        settings = within_the_bench(_campaign(campaign, [session], results))
+        record = _left_out(session, faulty[session]) if session in faulty else _reduced(settings, session)
+        folder.parent.mkdir(parents=True, exist_ok=True)
+        record.save(folder)
+    return folder
+
+
+def _scheme(campaign: Path) -> Scheme:
+    from reduction.markingfiles import read_scheme
+
+    scheme = read_scheme(campaign, faults=Faults())
+    if scheme is None:
+        message = "the scheme was edited while the run was going on. Start the run again."
+        raise ResultsError(message)
+    return scheme
+
+
+def class_summary(campaign: Path, results: Path) -> None:
+    """Draw the summary of the class, list who asks for a pseudonym, lay out the feedback of each bench."""
+    from reduction.claims import BenchFaults, read_register
+    from reduction.markingpages import class_pdf
+    from reduction.markrecord import from_record
+    from reduction.postedmarks import write_lists
+    from reduction.pseudonyms import read_key
+
+    made = Plan.load(results)
+    folder = results / resultsfolder.MARKING
+    files = {name: resultsfolder.marks_file(results, name, own) for name, own in made.marks.items()}
+    benches = {name: from_record(read_json(path)) for name, path in files.items()}
+    unmarked = _verdict(campaign, results, made)["unmarked"]
+    unknown = {name: text for name, text in unmarked.items() if name not in made.marks}
+    for part in ("staff", "bench"):
+        (folder / part).mkdir(parents=True, exist_ok=True)
+    summary = folder / "staff" / "summary.pdf"
+    class_pdf(list(benches.values()), summary, digest=made.campaign, title=made.title, unknown=unknown)
+    register = read_register(campaign, made.marks, set(made.marks), BenchFaults()) or {}
+    key = read_key(campaign, [row for rows in register.values() for row in rows], faults=Faults())
+    write_lists(folder / "staff", key, register, benches)
+    for name in benches:
+        _copy(resultsfolder.bench_page(results, name, made.bench_page_name(name)), folder / "bench" / f"{name}.pdf")
+    tell(f"class_summary: {len(benches)} benches")
 
 
 def session_files(results: Path) -> None:
@@ -252,6 +401,15 @@ def tidy(results: Path) -> None:
     tell("tidy: done")
 
 
+def provenance(results: Path) -> None:
+    """Write what tells how the results came about, and the checksums of every file."""
+    from reduction.provenance import write_provenance
+
+    made = Plan.load(results)
+    count = write_provenance(results, read_json(results / "run.json"), made.title)
+    tell(f"provenance: {count} files")
+
+
 def _note(results: Path, step: str, batch: str) -> Path:
     path = results / STATE / step / f"{batch}.json"
     path.parent.mkdir(parents=True, exist_ok=True)
@@ -262,7 +420,17 @@ def _span(names: Sequence[str]) -> str:
     return names[0] if len(names) == 1 else f"{names[0]} to {names[-1]}"
 
 
-STEPS = "plan check reduce adjust session_reports tables comparison report session_files tidy"
+def _unwritable(error: OSError) -> str:
+    """What a file that cannot be read or written means, and what to do."""
+    place = f"{error.filename}: " if error.filename else ""
+    return (
+        f"{place}{error.strerror or error}. Make room, or allow it, and start the same command again: what is done "
+        "stays, and it goes on from there."
+    )
+
+
+STEPS = "plan check reduce adjust session_reports tables comparison report "
+STEPS += "mark mark_sheet bench_reports class_summary session_files tidy provenance"
 
 
 def _arguments(argv: Sequence[str] | None) -> argparse.Namespace:
@@ -270,7 +438,7 @@ def _arguments(argv: Sequence[str] | None) -> argparse.Namespace:
     parser.add_argument("step", choices=STEPS.split())
     parser.add_argument("--campaign", type=Path, help="folder that holds campaign.yaml and sessions/")
     parser.add_argument("--results", type=Path, default=Path(), help="folder of the results (here)")
-    parser.add_argument("--batch", help="name of the batch of sessions, its first, for reduce and session_reports")
+    parser.add_argument("--batch", help="name of the batch of sessions, its first, for reduce, session_reports, mark")
     return parser.parse_args(argv)
 
 
@@ -293,6 +461,10 @@ def main(argv: Sequence[str] | None = None) -> int:
     except ReductionError as error:
         tell(f"{label}: {error}")
         LOG.error("%s", error)
+        return 1
+    except OSError as error:
+        tell(f"{label}: {_unwritable(error)}")
+        LOG.error("%s", traceback.format_exc())
         return 1
     except Exception as error:  # noqa: BLE001 - a job ends in one plain line, its log has the rest
         tell(f"{label}: stopped by {type(error).__name__}: {error}. The log of this step in {STATE}/logs says more.")

@@ -6,10 +6,12 @@ import csv
 import io
 import math
 import re
-from collections.abc import Iterable, Mapping, Sequence
+from array import array
+from collections.abc import Container, Iterable, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import pandas as pd
 
 from reduction.wholefile import write_whole
@@ -44,7 +46,8 @@ COLUMNS: dict[str, tuple[str, ...]] = {
 
 _TEXT = """session particle species charged_with status flags methods mass_from method reason method_a method_b quantity
     unit input scope owner shape result evaluation group group_a group_b log exclude note date scale kind members
-    verdict covariate intrinsic_basis"""
+    verdict covariate intrinsic_basis hints hint_codes look_at overridden words name email id_number pseudonym
+    criterion"""
 TEXT = frozenset(_TEXT.split())
 """Columns that hold text; every other one holds numbers."""
 
@@ -53,7 +56,7 @@ _WHOLE = """readings degrees_of_freedom line sessions particles count lost sign_
 WHOLE = frozenset(_WHOLE.split())
 """Columns that count something: written without a decimal point where the number is whole."""
 
-_NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?")
+_NUMBER = re.compile(r"[+-]?(\d+(\.\d*)?|\.\d+)([eE][+-]?\d+)?")
 _FORMULA = tuple("=+-@\t\r\n＝＋－＠")
 
 
@@ -136,22 +139,45 @@ def plain(cell: str) -> str:
     return cell
 
 
-def read_table(path: Path | str) -> pd.DataFrame:
+def read_table(
+    path: Path | str, *, only: Mapping[str, Container[str]] | None = None, columns: Container[str] | None = None
+) -> pd.DataFrame:
     """Read a CSV file written by `write_table`.
 
     Columns in `TEXT` are text ("" where empty), all others float64 with NaN where empty; a column of no known name is
     text where a cell of it is no number.
+
+    Parameters
+    ----------
+    path : Path or str
+        The file.
+    only : mapping of str to container of str, optional
+        Texts of a column whose rows are wanted; the others are passed over, which a large table asks for.
+    columns : container of str, optional
+        Columns wanted; all if left out.
     """
+    known = {name for names in COLUMNS.values() for name in names} - set(TEXT)
     with open(path, encoding="utf-8", newline="") as handle:
         reader = csv.reader(handle, strict=True)
         head = next(reader)
-        columns = list(zip(*reader, strict=True)) or [()] * len(head)
-    known = {name for names in COLUMNS.values() for name in names}
-    data: dict[str, Any] = {}
-    for name, cells in zip(head, columns, strict=True):
-        numeric = name not in TEXT and (name in known or all(not c or _NUMBER.fullmatch(c) for c in cells))
-        if numeric:
-            data[name] = pd.Series([float(c) if c else math.nan for c in cells], dtype="float64")
+        wanted = [(head.index(name), texts) for name, texts in (only or {}).items()]
+        kept = [place for place, name in enumerate(head) if columns is None or name in columns]
+        numbers = {place: array("d") for place in kept if head[place] in known}
+        texts: dict[int, list[str]] = {place: [] for place in kept if place not in numbers}
+        same: dict[str, str] = {}  # equal texts are kept once: most stand in many rows
+        for row in reader:
+            if len(row) != len(head):
+                message = f"{path} line {reader.line_num}: {len(row)} cells below a head of {len(head)}"
+                raise ValueError(message)
+            if all(row[place] in allowed for place, allowed in wanted):
+                for place, values in numbers.items():
+                    values.append(float(row[place] or "nan"))
+                for place, cells in texts.items():
+                    cells.append(same.setdefault(row[place], row[place]))
+    data: dict[str, Any] = {head[place]: pd.Series(np.array(values)) for place, values in numbers.items()}
+    for place, cells in texts.items():
+        if head[place] not in TEXT and all(not cell or _NUMBER.fullmatch(cell) for cell in cells):
+            data[head[place]] = pd.Series([float(cell or "nan") for cell in cells], dtype="float64")
         else:
-            data[name] = pd.Series([plain(c) for c in cells], dtype="str")
-    return pd.DataFrame(data, columns=head)
+            data[head[place]] = pd.Series([plain(cell) for cell in cells], dtype="str")
+    return pd.DataFrame(data, columns=[head[place] for place in kept])

@@ -109,6 +109,11 @@ def moved(estimate: float, u: float, adjusted: float) -> str:
     return minus(f"{(adjusted - estimate) / u + 0.0:.2f}").replace(f"{MINUS}0.00", "0.00")
 
 
+def chance(p: float) -> str:
+    """A p-value to two digits; below a millionth only that it is, for no model holds so far out."""
+    return f"< {power_of_ten(-6)}" if p < 1e-6 else significant(p, 2)
+
+
 def percent(share: float) -> str:
     """A share of the variance in percent."""
     if not math.isfinite(share):
@@ -119,13 +124,40 @@ def percent(share: float) -> str:
 
 
 def _visible(character: str) -> str:
-    if character in "\n\t":
+    if character in "\n\t\u2028\u2029":
         return " "
     kind = unicodedata.category(character)
     code = ord(character)
     if kind in ("Cc", "Co", "Cs") or character in _BIDI or (code & 0xFFFE) == 0xFFFE or 0xFDD0 <= code <= 0xFDEF:
         return f"[U+{code:04X}]"
     return character
+
+
+_PLAIN = re.compile(
+    "[^\x00-\u024f\u0370-\u052f\u05d0-\u05ea\u0620-\u064a\u1e00-\u1fff\u2000-\u20bf\u2100-\u22ff\u25a1]|[\u0300-\u036f]"
+)
+
+
+def spelled(text: str) -> str:
+    """Text with all but the letters of Latin, Greek, Cyrillic, Hebrew and Arabic and common signs spelled out."""
+    return _PLAIN.sub(lambda found: f"[U+{ord(found[0]):04X}]", unicodedata.normalize("NFC", text))
+
+
+def lettered(drawing: str) -> str:
+    """SVG text as it can be printed: letters one by one, a box for each that the page's faces lack.
+
+    In a printed drawing each glyph needs a letter of its own, so marks that do not join theirs go; and one letter
+    without a glyph would turn its whole label into boxes.
+    """
+    return re.sub(
+        r"[^\x00-\x7f]+", lambda found: "".join(map(_letter, unicodedata.normalize("NFC", found[0]))), drawing
+    )
+
+
+def _letter(letter: str) -> str:
+    if unicodedata.category(letter) in ("Mn", "Mc", "Me", "Cf"):
+        return ""
+    return _PLAIN.sub("\N{WHITE SQUARE}", letter)
 
 
 def visible(text: str) -> str:

@@ -200,6 +200,7 @@ def unit_spelling(text: str) -> str:
     return quotient if quotient in UNITS else plain
 
 
+_NAME_LIMIT = 500
 _BRACKETS = re.compile(r"(?P<stem>[^\[\](/]+?)\s*(?:\[(?P<square>[^\[\]]*)\]|\((?P<round>[^()]*)\)|/\s*(?P<slash>.+))")
 
 
@@ -213,6 +214,8 @@ def split_name(name: str) -> tuple[str, str]:
     (('dc_field_per_volt', 'per_m'), ('charge_to_mass', 'C_per_kg'), ('height', 'um'))
     """
     name = name.strip()
+    if len(name) > _NAME_LIMIT:  # no column or key is that long, and the pattern would take its time
+        return name, ""
     written = _BRACKETS.fullmatch(name)
     if written:
         unit = written["square"] or written["round"] or (written["slash"] or "").strip()

@@ -4,22 +4,33 @@ from __future__ import annotations
 
 import json
 import os
+import secrets
 from collections.abc import Iterator, Mapping
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from pathlib import Path
 from typing import IO, Any
+
+
+def part_of(path: Path) -> Path:
+    """Name beside a file or folder to make it under: no two writers, on one machine or on several, share it."""
+    return path.with_name(f".{path.name}.{secrets.token_hex(4)}.part")
 
 
 @contextmanager
 def whole_file(path: Path | str) -> Iterator[IO[bytes]]:
     """Open a file to write that appears under its name only once it is complete and on the disk."""
     path = Path(path)
-    part = path.with_name(f".{path.name}.part")
-    with open(part, "wb") as handle:
-        yield handle
-        handle.flush()
-        os.fsync(handle.fileno())
-    os.replace(part, path)
+    part = part_of(path)
+    try:
+        with open(part, "wb") as handle:
+            yield handle
+            handle.flush()
+            os.fsync(handle.fileno())
+        os.replace(part, path)
+    except BaseException:
+        with suppress(OSError):
+            part.unlink(missing_ok=True)
+        raise
 
 
 def write_whole(path: Path | str, data: bytes) -> None:

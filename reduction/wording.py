@@ -34,7 +34,11 @@ OWN = {
     "secular": "own secular readings",
     "diameter": "own or lot diameter",
 }
-_KEYS = {"finite_reynolds": "finite Reynolds number"}
+_KEYS = {
+    "finite_reynolds": "finite Reynolds number",
+    "field_departure": "departure from the linear field",
+    "field_solution": "numerical solution of the field",
+}
 _LONGEST_FIRST = sorted(UNITS, key=lambda spelling: (-len(spelling), spelling))
 _RAISED = {"2": "²", "3": "³"}
 

@@ -7,6 +7,12 @@ from pathlib import Path
 
 import pytest
 from edited import Edited, copied, simulated
+from finished import finish
+from finished import simulated as two_materials
+from hypothesis import HealthCheck, settings
+
+settings.register_profile("untimed", deadline=None, suppress_health_check=[HealthCheck.too_slow])
+settings.load_profile("untimed")  # how busy the machine is says nothing about the program
 
 
 @pytest.fixture(scope="session")
@@ -31,6 +37,15 @@ def dense(tmp_path_factory: pytest.TempPathFactory) -> Path:
 def low_pressure(tmp_path_factory: pytest.TempPathFactory) -> Path:
     """One 30 um bead at a few hectopascal: balance and secular frequencies."""
     return simulated(tmp_path_factory.mktemp("simulated") / "low", "low_pressure", seed=5)
+
+
+@pytest.fixture(scope="session")
+def finished_run(tmp_path_factory: pytest.TempPathFactory) -> tuple[Path, Path]:
+    """A campaign of three sessions and its results, in folders with spaces and umlauts; not to be changed."""
+    folder = tmp_path_factory.mktemp("finished") / "Büro (2)"
+    folder.mkdir()
+    campaign = two_materials(folder / "my campaign")
+    return campaign, finish(campaign, folder / "my results")
 
 
 @pytest.fixture

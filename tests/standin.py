@@ -41,7 +41,7 @@ class Campaign:
     leave_out: dict
     faulty: dict = field(default_factory=dict)
 
-def load_campaign(folder, *, faults, only=None):
+def load_campaign(folder, *, faults, only=None, keep=None):
     given = digests.campaign_settings(folder)
     options = Options(**{k: v for k, v in given.items() if k in Options.__annotations__})
     names = digests.session_ids(folder)
@@ -56,7 +56,7 @@ from reduction.errors import Faults
 from reduction.settings import load_campaign
 from reduction.logs import read_logs
 
-def check_campaign(folder):
+def check_campaign(folder, *, keep=None):
     faults = Faults()
     campaign = load_campaign(folder, faults=faults)
     logs = {}
@@ -75,7 +75,10 @@ def check_campaign(folder):
 def faults_text(faults):
     return "\\n".join(map(str, faults))
 
-def report_text(campaign, logs, faults):
+def check_marking(campaign, logs, faults):
+    return None
+
+def report_text(campaign, logs, faults, marking):
     return faults_text(faults) + f"{len(campaign.sessions)} sessions, {len(faults)} faults"
 """,
     "session": """
@@ -112,8 +115,10 @@ def session_pdf(folder, out, *, digest, title):
 def failed_session_pdf(session, faults_text, out, *, digest):
     write_whole(out, faults_text.encode() + digest.encode())
 
-def campaign_pdf(results, records, out, *, digest, title):
-    write_whole(out, (results / "comparison.csv").read_bytes() + digest.encode() + title.encode())
+def campaign_pages(results, records, *, digest, title, traps):
+    for end in ("pdf", "html"):
+        data = (results / "comparison.csv").read_bytes() + digest.encode() + title.encode()
+        write_whole(results / f"report.{end}", data)
 """,
 }
 
@@ -124,6 +129,7 @@ def checkout(folder: Path, *, real: bool = False) -> Path:
     shutil.copytree(ROOT / "reduction", folder / "reduction", ignore=shutil.ignore_patterns("__pycache__"))
     for name in ("Snakefile", "pyproject.toml"):
         shutil.copy(ROOT / name, folder)
+    shutil.copytree(ROOT / ".locks", folder / ".locks")
     metadata = folder / "motescale-0.dist-info" / "METADATA"  # this copy counts as the installed one
     metadata.parent.mkdir()
     metadata.write_text("Metadata-Version: 2.1\nName: motescale\nVersion: 0\n")

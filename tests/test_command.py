@@ -17,7 +17,9 @@ from reduction.command import main
 from reduction.tables import read_table
 
 ROOT = Path(__file__).resolve().parent.parent
-COMMANDS = ["check", "run", "new", "session", "simulate", "explain", "plan", "verify"]
+COMMANDS = [
+    "check", "run", "new", "session", "simulate", "explain", "plan", "trap", "diff", "pack", "gradebook", "verify",
+]  # fmt: skip
 
 
 def test_help_lists_every_command_and_the_cautions(capsys: pytest.CaptureFixture[str]) -> None:
@@ -44,7 +46,9 @@ def test_every_command_has_help(name: str, capsys: pytest.CaptureFixture[str]) -
         ["weigh"],
         ["check"],
         ["plan"],
-        ["verify", "c"],
+        ["verify"],
+        ["diff", "a"],
+        ["pack", "r"],
         ["verify", "--refit", "s001", "c"],
         ["run", "a"],
         ["run", "a", "b", "--cores", "0"],
@@ -87,6 +91,9 @@ def test_check_of_the_example_tells_how_its_files_are_read(capsys: pytest.Captur
         (["plan", "--difference", "0", "--between-sessions", "1", "--between-particles", "1"], "other than 0"),
         (["plan", "--difference", "1", "--between-sessions", "-1", "--between-particles", "1"], "between_sessions"),
         (["verify", "--refit", "s001/p01", "nowhere"], "no folder nowhere"),
+        (["verify", "c", "--refit", "s1/p1", "--campaign", "c"], "--campaign goes with a results folder"),
+        (["verify", "nowhere"], "nowhere: there is no finished run in this folder"),
+        (["pack", "nowhere", "out.zip"], "nowhere: there is no finished run in this folder"),
         (["simulate", "sim", "--plan", "room_air_lihgt"], "Did you mean room_air_light?"),
         (["simulate", "sim", "--sessions", "0"], "at least one"),
     ],
@@ -120,6 +127,18 @@ def test_new_campaign_and_session_are_written_and_not_overwritten(
     capsys.readouterr()
     assert main(["new", str(folder)]) == 1
     assert "Traceback" not in capsys.readouterr().err
+
+
+def test_simulated_course_passes_the_check_and_has_fair_marks_beside_it(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    folder = tmp_path / "course"
+    assert main(["simulate", str(folder), "--course", "--sessions", "2", "--particles", "2"]) == 0
+    assert "course.truth_marks.csv" in capsys.readouterr().out
+    assert main(["check", str(folder)]) == 0
+    assert "marking: 12 claims, 4 people" in capsys.readouterr().out
+    assert main(["simulate", str(tmp_path / "x"), "--course", "--plan", "all"]) == 1
+    assert "found --course with --plan" in capsys.readouterr().err
 
 
 def test_simulated_campaign_passes_the_check(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:

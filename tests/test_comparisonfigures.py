@@ -99,6 +99,13 @@ def test_long_names_keep_their_ends() -> None:
     assert short.endswith("name 12")
 
 
+def test_broad_letters_count_for_more() -> None:
+    assert comparisonfigures.shortened("i" * 20, 20) == "i" * 20
+    assert len(comparisonfigures.shortened("W" * 20, 20)) < 12
+    assert len(comparisonfigures.shortened("\u5f20" * 20, 20)) < 10
+    assert comparisonfigures.shortened("e\u0301" * 20, 20) == "e\u0301" * 20
+
+
 @pytest.mark.parametrize("count", [3, 14, 40])
 def test_figures_keep_their_words_on_the_paper_and_fit_a_page(count: int, drawn: list[Figure]) -> None:
     names = [f"a rather long name of a material {k}" for k in range(count)]

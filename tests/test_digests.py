@@ -203,3 +203,18 @@ def test_same_session_elsewhere_tells_a_moved_campaign_from_another(tmp_path: Pa
     known = json.loads((results / STATE / "campaign.json").read_text())
     place = hashlib.sha256(os.fsencode(os.path.realpath(tmp_path / "moved"))).hexdigest()
     assert known["place"] == place
+
+
+def test_versions_are_those_of_the_modules_that_are_imported() -> None:
+    modules = [{"pyyaml": "yaml", "fonttools": "fontTools"}.get(name, name) for name in digests.LIBRARIES]
+    code = f"import {', '.join(modules)}\nfor one in ({', '.join(modules)}): print(getattr(one, '__version__', ''))"
+    ran = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
+    said = dict(zip(digests.LIBRARIES, ran.stdout.splitlines(), strict=True))
+    told = digests.versions()
+    assert {name: told[name] for name in said if said[name]} == {name: text for name, text in said.items() if text}
+    assert sum(map(bool, said.values())) >= 7
+
+
+def test_lock_is_told_by_the_sum_of_its_file() -> None:
+    root = Path(__file__).resolve().parent.parent
+    assert digests.lock_digest() == hashlib.sha256((root / ".locks/requirements.lock").read_bytes()).hexdigest()

@@ -16,20 +16,28 @@ PACKAGE = ROOT / "reduction"
 # A module imports from modules above it only.
 _ORDER = """
 errors places wholefile units flags
-textfile contract yamlfile quantity entries logged sessionfile csvfile heads wording
-air gravity drag recurrence floquet secular resonance motion
+textfile contract yamlfile quantity entries logged sessionfile csvfile heads wording benchrows stateddigits digests
+air gravity drag conductors clearances meridian boundary trapfield electrodes tolerances
+fieldmap drawing drawingfile drawingcheck trapconstants trapsolution
+recurrence floquet secular resonance motion
+markrows markscheme claims markingfiles markrecord pseudonyms
 settings schemas logs check newcampaign
-inputs methods fits adjustment charge starts propagation budget agreement preparation slips solution strain
+inputs methods fits normalequations reducedequations lotvolume adjustment charge starts propagation
+budget agreement preparation slips solution strain
 shapes noise montecarlo outcome window sanity refits validation
 tables correlated multiplicity randomeffects sessionmeans groupmeans pairs ranks transitivity trends comparison
 unseen intrinsic histogram planning comparisonwords groupbudget comparisontables
 records resultrows readingrows curves sessionfacts session
+benchreference mistakes criteria valuemark marking markedbench marksheet postedmarks fieldspans gradebook
 simulationplan simulationtruth simulationreadings simulationfiles simulationexample simulation
-typeset sheets figurestyle panels figures campaignfigures comparisonfigures chargefigures
+simulationclaims simulationcourse
+typeset sheets figurestyle panels figures campaignfigures comparisonfigures chargefigures trapwords trapfigures
 limits sessiontables sessionbudget glance campaigntables sessionreport
-comparisonpages comparisonsheets comparisonreport campaignreport
-report findings equations explain
-digests batches resultsfolder rundiff sessionsneeded assembly steps running command
+comparisonpages comparisonsheets comparisonreport campaignsections trapreport campaignreport
+benchfigures advice benchreport classfigures classsummary
+webfigure webfont webpage report markingpages findings equations explain
+batches resultfiles columns checksums datapackage crate provenance
+resultsfolder rundiff reasons resultsdiff diffwords bundle sessionsneeded assembly steps running trapcommand command
 """
 ORDER = _ORDER.split()
 
@@ -37,7 +45,19 @@ ORDER = _ORDER.split()
 DOORS = {
     "lmfit": {"fits"},
     "typst": {"report"},
-    "matplotlib": {"figurestyle", "panels", "figures", "campaignfigures", "report"},  # report: the folder of its fonts
+    "jinja2": {"webpage"},
+    "markupsafe": {"webpage"},
+    "fontTools": {"webfont"},
+    "matplotlib": {
+        "figurestyle",
+        "panels",
+        "figures",
+        "campaignfigures",
+        "benchfigures",
+        "classfigures",
+        "trapfigures",
+        "report",
+    },  # report: the folder of its fonts
     "yaml": {"yamlfile", "digests", "newcampaign", "simulationtruth"},  # digests: texts only, before the check
     "snakemake": set(),
 }

@@ -1,10 +1,14 @@
+import re
+from pathlib import Path
+
 import pytest
+from drawn import OTHER, read
 from small_campaign import BALANCE, FILES, HEIGHT, SESSION, write
 from test_schemas import EditorLoader
 
 from reduction.check import check_campaign
 from reduction.errors import Faults, InputError
-from reduction.newcampaign import new_campaign, new_session
+from reduction.newcampaign import DRAWN, new_campaign, new_session
 from reduction.settings import load_campaign
 
 FILLED = {
@@ -61,6 +65,18 @@ def test_a_new_campaign_filled_in_is_fit_to_be_reduced(tmp_path):
     assert list(map(str, faults)) == []
     assert sorted(logs["s001"].tables) == ["balance", "height"]
     assert campaign.sessions["s001"].charged_with == "glass"
+
+
+def test_the_trap_drawn_in_the_comments_is_fit_to_be_computed(tmp_path):
+    new_campaign(tmp_path)
+    path = tmp_path / "traps/trap-a.yaml"
+    shown = [line.removeprefix("# ") for line in path.read_text().splitlines() if line.startswith("# ")]
+    at = shown.index("electrodes:")
+    drawn = "\n".join(shown[at : at + len(DRAWN.splitlines())]) + "\n"
+    assert drawn == DRAWN
+    drawing, faults = read(tmp_path / "drawn", OTHER + drawn)
+    assert faults == []
+    assert len(drawing.electrodes(drawing.nominal).conductors) == 4
 
 
 def test_options_shown_are_the_defaults(tmp_path):
@@ -222,3 +238,23 @@ def test_a_session_needs_a_campaign_and_a_readable_one_to_follow(tmp_path):
     write(tmp_path, {SESSION: "["})
     with pytest.raises(InputError, match="not YAML"):
         new_session(tmp_path, "s002", like="s001")
+
+
+def test_the_drawing_in_the_how_to_is_fit_to_be_computed(tmp_path):
+    text = (Path(__file__).parents[1] / "data_example" / "measuring-your-trap.md").read_text()
+    block = text.partition("```yaml\n")[2].partition("```")[0]
+    drawing, faults = read(tmp_path, OTHER + block)
+    assert faults == []
+    assert drawing.names[0] == "hole_radius"
+    names = {
+        "lower": "plate_height", "upper": "[plate_height, 2]", "rod_radius": "hole_radius",
+        "ball_radius": "hole_radius", "height": "[plate_height, hole_radius]", "h": "plate_height", "a": "hole_radius",
+    }  # fmt: skip
+    rows = re.findall(r"`((?:circle|rectangle|outline): .*?[}\]])`", text)
+    assert len(rows) == 6
+    for row in rows:
+        form, _, rest = row.partition(":")
+        shown = re.sub(rf"\b({'|'.join(names)})\b", lambda word: names[word[1]], rest)
+        head = block[: block.index("    plate:")]
+        alone = f"{head}    shown:\n      carries: ground\n      {form}:{shown}\n"
+        assert [fault for fault in read(tmp_path, OTHER + alone)[1] if "shown" in fault.column] == [], row

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import hashlib
+import json
+import os
 import re
 import subprocess
 import sys
@@ -12,8 +15,10 @@ from pathlib import Path
 import pytest
 from standin import Bench, campaign, checkout, contents
 
+from reduction import digests
+
 ROOT = Path(__file__).resolve().parent.parent
-LOCKS = ["requirements.lock", "requirements-test.lock"]
+LOCKS = [".locks/requirements.lock", ".locks/requirements-test.lock", ".locks/requirements-slurm.lock"]
 INSTALL = [
     "python3 -m venv .venv",
     ".venv/bin/python -m pip install --require-hashes -r {lock}",
@@ -45,13 +50,19 @@ def test_locks_hold_what_is_declared_and_agree() -> None:
     build = tomllib.loads((ROOT / "pyproject.toml").read_text())["build-system"]["requires"]
     assert names([*project["dependencies"], *build]) <= set(pins[0])
     assert names(project["optional-dependencies"]["test"]) <= set(pins[1])
+    assert names(project["optional-dependencies"]["slurm"]) <= set(pins[2])
     assert pins[0].items() <= pins[1].items()
+    assert pins[0].items() <= pins[2].items()
 
 
 def test_every_declared_dependency_is_used() -> None:
     texts = [path.read_text() for path in (ROOT / "reduction").glob("*.py")]
     imported = set(re.findall(r"^\s*(?:import|from) (\w+)", "\n".join(texts), re.MULTILINE)) | {"snakemake"}
-    assert names(declared()["dependencies"]) <= {{"yaml": "pyyaml"}.get(name, name) for name in imported}
+    assert names(declared()["dependencies"]) <= {{"yaml": "pyyaml"}.get(name, name.lower()) for name in imported}
+
+
+def test_versions_of_all_that_jobs_import_are_stated() -> None:
+    assert set(digests.LIBRARIES) == names(declared()["dependencies"]) - {"snakemake"}
 
 
 def test_licence_is_the_three_clause_one_of_the_developers() -> None:
@@ -93,6 +104,7 @@ def test_wheel_holds_package_and_workflow_and_nothing_else(wheel: Path) -> None:
     with zipfile.ZipFile(wheel) as archive:
         held = {name for name in archive.namelist() if ".dist-info/" not in name}
     expected = {f"reduction/{path.name}" for path in (ROOT / "reduction").glob("*.py")} | {"reduction/Snakefile"}
+    expected |= {"reduction/.locks/requirements.lock"}
     files = [path for path in (ROOT / "workflow").rglob("*") if path.is_file() and "__pycache__" not in path.parts]
     expected |= {f"reduction/{path.relative_to(ROOT).as_posix()}" for path in files}
     assert held == expected
@@ -112,3 +124,53 @@ def test_installed_copy_runs_outside_the_checkout_and_gives_the_same_bytes(wheel
     ran = bench.finish(command, PYTHONPATH=str(installed), PYTHONSAFEPATH="1")
     assert ran.returncode == 0, ran.stdout + ran.stderr
     assert contents(other) == contents(bench.results)
+
+
+@pytest.fixture
+def installed(wheel: Path, tmp_path: Path) -> Path:
+    """Folder the wheel is installed in, away from the checkout."""
+    folder = tmp_path / "site packages"
+    with zipfile.ZipFile(wheel) as archive:
+        archive.extractall(folder)
+    return folder
+
+
+def outside(folder: Path, *argv: str, path: str) -> subprocess.CompletedProcess[str]:
+    """Run a module in a folder away from the checkout, with modules from `path` first."""
+    kept = {name: value for name, value in os.environ.items() if not name.startswith(("PYTEST", "PYTHON"))}
+    return subprocess.run(
+        [sys.executable, "-m", *argv], cwd=folder, capture_output=True, text=True, check=False, timeout=600,
+        env=kept | {"PYTHONPATH": path, "PYTHONSAFEPATH": "1"},
+    )  # fmt: skip
+
+
+@pytest.mark.packaging
+def test_installed_copy_draws_reports_and_verifies_outside_the_checkout(installed: Path, tmp_path: Path) -> None:
+    where = tmp_path / "somewhere else"
+    where.mkdir()
+    asked = ["--sessions", "1", "--particles", "2"]
+    for command in (
+        ["simulate", "campaign", *asked],
+        ["run", "campaign", "results", "--cores", "1"],
+        ["verify", "results", "--campaign", "campaign"],
+        ["pack", "results", "results.zip"],
+        ["explain", "results", "s001", "p01"],
+    ):
+        ran = outside(where, "reduction.command", *command, path=str(installed))
+        assert ran.returncode == 0, ran.stdout + ran.stderr
+        assert str(ROOT) not in ran.stdout + ran.stderr
+    for page in (where / "results" / "report.pdf", where / "results" / "sessions" / "s001.pdf"):
+        assert page.read_bytes().startswith(b"%PDF-")
+    run = json.loads((where / "results" / "run.json").read_text())
+    assert run["lock"] == hashlib.sha256((ROOT / ".locks/requirements.lock").read_bytes()).hexdigest()
+
+
+@pytest.mark.packaging
+def test_installed_workflow_with_another_package_in_front_is_refused(installed: Path, tmp_path: Path) -> None:
+    front = checkout(tmp_path / "checkout")
+    command = ["snakemake", "--snakefile", str(installed / "reduction" / "Snakefile"), "--cores", "1", "--config"]
+    config = [f"campaign={campaign(tmp_path / 'c', 1)}", f"results={tmp_path / 'r'}"]
+    ran = outside(tmp_path, *command, *config, path=f"{front}{os.pathsep}{installed}")
+    assert ran.returncode == 1
+    assert f"but Python imports {front / 'reduction'}. Start it where it is installed." in ran.stderr
+    assert not (tmp_path / "r" / "run.json").exists()

@@ -6,7 +6,7 @@ import math
 
 import numpy as np
 import pytest
-from scipy import stats
+from scipy import sparse, stats
 
 from reduction.groupmeans import GroupMeans, group_means
 from reduction.pairs import Pair
@@ -21,7 +21,9 @@ def means(values: dict[str, list[float]], common: float = 0.0) -> GroupMeans:
     size, nothing = len(y), np.zeros(len(y))
     shared = np.full((size, 1), common)
     names = tuple(f"s{k}" for k in range(size))
-    cells = Cells(names, group, np.ones(size), y, nothing, nothing, nothing, shared, ("trap/x/d",), ("trap",))
+    cells = Cells(
+        names, group, np.ones(size), y, nothing, nothing, nothing, sparse.csr_array(shared), ("trap/x/d",), ("trap",)
+    )
     return group_means(cells)
 
 
@@ -103,6 +105,8 @@ def test_an_error_of_one_group_alone_unsettles_its_rank() -> None:
     group, y = ("a",) * 3 + ("b",) * 3, np.array([1.0, 1.1, 1.2, 0.0, 0.1, 0.2])
     names, nothing = tuple(f"s{k}" for k in range(6)), np.zeros(6)
     shared = np.array([[50.0]] * 3 + [[0.0]] * 3)
-    cells = Cells(names, group, np.ones(6), y, nothing, nothing, nothing, shared, ("trap/x/d",), ("trap",))
+    cells = Cells(
+        names, group, np.ones(6), y, nothing, nothing, nothing, sparse.csr_array(shared), ("trap/x/d",), ("trap",)
+    )
     chances = rank_probabilities(group_means(cells), seed=1, trials=20_000)
     assert chances[0, 0] == pytest.approx(float(stats.norm.cdf(1.0 / 50.0)), abs=0.012)

@@ -153,6 +153,35 @@ def test_reports_are_tagged_archival_titled_and_carry_their_fonts(
 
 
 @needs_poppler
+def test_campaign_report_has_an_outline_and_leads_to_the_files_beside_it(whole: tuple[Path, Path]) -> None:
+    command = ["pdftohtml", "-xml", "-i", "-stdout", str(whole[1])]
+    raw = subprocess.run(command, capture_output=True, check=True).stdout.decode()
+    outline = re.findall(r'<item page="\d+">(.*?)</item>', raw)
+    assert outline[:3] == ["Result by group", "What to trust", "What was left out, and why"]
+    assert outline[-1] == "Cautions"
+    assert {"Particles", "Charge in electrons", "What limits the result", "Provenance"} <= set(outline)
+    links = subprocess.run(["pdfinfo", "-url", str(whole[1])], capture_output=True, check=True).stdout.decode()
+    for file in ("sessions/s001.pdf", "readings/s005.csv", "figures/comparison.csv", "contrasts.csv", "run.json"):
+        assert re.search(rf"\s{re.escape(file)}$", links, re.MULTILINE), file
+    assert "://" not in links
+
+
+@needs_poppler
+def test_campaign_report_splits_u_by_scope(whole: tuple[Path, Path]) -> None:
+    """Shares of the made-up budget are the squares of its weights, equal for every particle and result."""
+    text = text_of(whole[1], keep_lines=True)
+    budget = rows_of(read_table(whole[0] / "budget.csv"))
+    own = [r for r in budget if (r["session"], r["particle"], r["result"]) == ("s001", "p01", "charge")]
+    expected = {scope: sum(r["share"] for r in own if r["input"].startswith(f"{scope}/"))
+                for scope in ("particle", "session", "trap", "species", "campaign")}  # fmt: skip
+    assert sum(expected.values()) == pytest.approx(1.0)
+    table = text[text.index("What limits the result") :]
+    line = next(row for row in table.splitlines() if re.match(r"\s*Charge\s", row))
+    printed = [float(word) for word in re.findall(r"\d+\.\d$|\d+\.\d(?= )", line)][-5:]
+    assert printed == [round(100 * share, 1) for share in expected.values()]
+
+
+@needs_poppler
 def test_pages_say_nothing_of_folder_clock_or_user(session: tuple[Path, Path]) -> None:
     folder, pdf = session
     assert str(folder).encode() not in pdf.read_bytes()
@@ -217,6 +246,29 @@ def test_campaign_report_takes_hostile_names_and_titles_as_text(tmp_path: Path) 
     assert "[U+0007]張" in text
 
 
+ODD = {
+    "decomposed": "nai\u0308ve x\u0301\u0323y",
+    "pointed": "שָׁלוֹם مُحَمَّد",
+    "far": "हिन्दी ภาษาไทย ខ្មែរ 張 か\u3099 〔〕",
+    "signs": "👩‍🔬 🏳️‍🌈 🇩🇪 ☎️ ✨ 🏼 a\u20dd \u3164 a\u2028b",
+}
+
+
+@needs_poppler
+@pytest.mark.parametrize("kind", ODD)
+def test_letters_no_face_has_stop_no_report(kind: str, tmp_path: Path) -> None:
+    results, folders = campaign(tmp_path, group=ODD[kind], title=ODD[kind])
+    report.campaign_pages(results, folders, digest=DIGEST)
+    assert words_outside(results / "report.pdf") == []
+    record = write_record(tmp_path / "rec", charged_with=ODD[kind], operator=ODD[kind], notes=ODD[kind])
+    report.session_pdf(record, tmp_path / "s.pdf", digest=DIGEST, title=ODD[kind])
+    report.failed_session_pdf("s009", ODD[kind], tmp_path / "f.pdf", digest=DIGEST)
+    for pdf in (tmp_path / "s.pdf", tmp_path / "f.pdf"):
+        assert words_outside(pdf) == []
+    if kind == "signs":
+        assert "[U+20DD]" in text_of(tmp_path / "f.pdf")
+
+
 def words_outside(pdf: Path, margin: float = 30.0) -> list[str]:
     """Words of a PDF whose boxes reach closer to the edge of the paper than the page's margin allows [pt]."""
     raw = subprocess.run(["pdftotext", "-bbox", str(pdf), "-"], capture_output=True, check=True).stdout.decode()
@@ -243,11 +295,37 @@ def test_nothing_overflows_the_page_however_long_the_text(tmp_path: Path, sessio
 
 
 @needs_poppler
-def test_nothing_overflows_the_page_of_a_campaign(tmp_path: Path, whole: tuple[Path, Path]) -> None:
-    results, folders = campaign(tmp_path, group="g" * 120, title="t" * 300)
+@pytest.mark.parametrize(("group", "title"), [
+    ("g" * 120, "t" * 3000),
+    (HOSTILE["right_to_left"] * 4, HOSTILE["right_to_left"] * 2),
+    (HOSTILE["other_letters"] * 3, HOSTILE["controls"] * 8),
+    ("W" * 30 + "\u0301\u0323" * 40, LONG),
+])  # fmt: skip
+def test_nothing_overflows_the_page_of_a_campaign(tmp_path: Path, group: str, title: str) -> None:
+    results, folders = campaign(tmp_path, group=group, title=title)
     report.campaign_pdf(results, folders, tmp_path / "c.pdf", digest=DIGEST)
     assert words_outside(tmp_path / "c.pdf") == []
-    assert words_outside(whole[1]) == []
+    first = subprocess.run(["pdftotext", "-l", "1", str(tmp_path / "c.pdf"), "-"], capture_output=True, check=True)
+    assert "Result by group" in first.stdout.decode()  # however long the title
+
+
+@needs_poppler
+@pytest.mark.parametrize("kind", ["session", "whole", "failed"])
+def test_nothing_overflows_a_page_of_any_kind(kind: str, request: pytest.FixtureRequest, tmp_path: Path) -> None:
+    pdf = tmp_path / "s009.pdf"
+    if kind == "failed":
+        report.failed_session_pdf("s" * 64, "x" * 3000 + "\n" + HOSTILE["right_to_left"] * 20, pdf, digest=DIGEST)
+    else:
+        pdf = request.getfixturevalue(kind)[1]
+    assert words_outside(pdf) == []
+
+
+@needs_poppler
+def test_a_title_too_long_for_the_first_page_stands_whole_among_the_settings(tmp_path: Path) -> None:
+    title = " ".join(f"word{k}" for k in range(200))
+    results, folders = campaign(tmp_path, title=title)
+    report.campaign_pdf(results, folders, tmp_path / "c.pdf", digest=DIGEST)
+    assert "word199" in text_of(tmp_path / "c.pdf")
 
 
 @needs_poppler
@@ -271,8 +349,8 @@ def test_campaign_report_prints_the_mean_of_session_means(whole: tuple[Path, Pat
             values = [p["charge_to_mass_C_per_kg"] for p in own if p["session"] == name]
             means.append(sum(values) / len(values))
         mean = 1e3 * sum(means) / len(means)
-        line = next(row for row in text_of(whole[1], keep_lines=True).splitlines() if row.strip().startswith(group))
-        printed = re.search(r"([−\d.]+)\((\d+)\)", line)
+        rows = [row for row in text_of(whole[1], keep_lines=True).splitlines() if row.strip().startswith(group)]
+        printed = next(filter(None, (re.search(r"([−\d.]+)\((\d+)\)", row) for row in rows)), None)
         assert printed is not None
         decimals = len(printed[1].partition(".")[2])
         assert float(printed[1].replace(MINUS, "-")) == pytest.approx(mean, abs=0.51 * 10**-decimals)

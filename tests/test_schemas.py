@@ -62,7 +62,10 @@ def test_the_small_campaign_passes(name):
     assert complaints(KIND[name], FILES[name]) == []
 
 
-@pytest.mark.parametrize("path", sorted((ROOT / "data_example").rglob("*.yaml")), ids=lambda path: path.stem)
+EXAMPLES = sorted(path for path in (ROOT / "data_example").rglob("*.yaml") if path.stem != "scheme")
+
+
+@pytest.mark.parametrize("path", EXAMPLES, ids=lambda path: path.stem)
 def test_the_example_passes(path):
     kind = {"traps": "trap", "species": "species"}.get(path.parent.name, path.stem)
     assert complaints(kind, path.read_text()) == []

@@ -270,5 +270,5 @@ def test_latitude_is_told_in_degrees(tmp_path: Path) -> None:
 def test_every_result_has_a_row_of_limits(tmp_path: Path) -> None:
     folder = write_record(tmp_path)
     rows = said(folder)["limits"]["rows"]
-    assert [row[0] for row in rows] == [sessionbudget.title(name) for name in sessionbudget._VALUES]
+    assert [row[0] for row in rows] == [sessionbudget.title(name) for name in limits.VALUES]
     assert rows[0][1].replace("\u00a0", " ") == "1.4 %"  # u of every particle of the made-up record is 0.014 of q/m

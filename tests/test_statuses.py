@@ -4,16 +4,20 @@ from __future__ import annotations
 
 import itertools
 import math
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
 import pandas as pd
 import pytest
+from drawn import draw
 from edited import Edited, flags, method, particle, scaled, simulated, truth_of
 from scipy import stats
 
 from reduction import motion
+from reduction.check import check_campaign
 from reduction.flags import FLAGS
+from reduction.session import reduce_session
 
 DRIVE = "drive_voltage_peak_V"
 NUMBERS = ("charge_to_mass_C_per_kg", "drag_rate_per_s", "diameter_um", "mass_kg", "charge_C", "charge_e")
@@ -306,6 +310,20 @@ def test_heights_beyond_the_usable_range_are_flagged_and_kept(edit, light):
     assert 0 < far.sum() < 18
     assert flags(record) == {"beyond_usable_height"}
     assert particle(record)["charge_e"] == particle(edit(light).reduce())["charge_e"]
+
+
+def test_departure_of_the_field_is_flagged_where_it_shifts_a_height(edit, light):
+    """The trap as a drawing whose field is made to depart thirty times as much from the linear one."""
+    made = edit(light)
+    draw(made.folder / "traps" / f"{made.only_name('traps')}.yaml")
+    campaign, logs, faults = check_campaign(made.folder)
+    assert not list(faults)
+    (name, trap), *_ = campaign.traps.items()
+    terms = {key: tuple(30.0 * one for one in getattr(trap.constants, key)) for key in ("drive_terms", "dc_terms")}
+    strong = replace(trap, constants=replace(trap.constants, **terms))
+    for drawn, expected in ((trap, False), (strong, True)):
+        record = reduce_session(replace(campaign, traps={name: drawn}), "s001", logs["s001"])
+        assert ("field_departure" in flags(record)) is expected
 
 
 def test_finite_reynolds_number_is_flagged_and_enters_the_budget(edit, light):

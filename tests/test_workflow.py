@@ -9,16 +9,20 @@ from __future__ import annotations
 import csv
 import json
 import os
+import re
 import shutil
 import signal
 import subprocess
 import sys
 from pathlib import Path
+from urllib.parse import unquote
 
 import pytest
 from standin import ROOT, Bench, add_session, campaign, checkout, contents
 
 from reduction import comparison, comparisontables
+from reduction.checksums import set_edited_aside, verification
+from reduction.resultfiles import SUMS, kind_of
 from reduction.tables import COLUMNS, read_table, table_text
 from reduction.wholefile import read_json
 
@@ -26,6 +30,7 @@ pytestmark = pytest.mark.workflow
 
 SESSIONS = [f"s{number:02d}" for number in range(1, 13)]  # enough for two batches
 COMPARISON = [f"{name}.csv" for name in comparisontables.TABLES]
+RULES = sorted(path.name for path in (ROOT / "workflow" / "rules").glob("*.smk"))
 TABLES = ["agreement.csv", "budget.csv", "components.csv", "inputs.csv", "methods.csv", "particles.csv"]
 
 
@@ -61,11 +66,14 @@ def good(ran: subprocess.CompletedProcess[str]) -> None:
 
 
 def test_run_gives_every_file_of_the_contract(finished: Bench) -> None:
-    expected = [*TABLES, *COMPARISON, "comparison.json", "report.pdf", "run.json"]
+    expected = [*TABLES, *COMPARISON, "comparison.json", "report.html", "report.pdf", "run.json", SUMS]
+    expected += ["datapackage.json", "readings.schema.json", "ro-crate-metadata.json"]
+    expected += [f"program/{name}" for name in ("Snakefile", *(f"workflow/rules/{name}" for name in RULES))]
     expected += [
         f"{folder}/{name}{end}" for name in SESSIONS for folder, end in (("readings", ".csv"), ("sessions", ".pdf"))
     ]
     assert sorted(contents(finished.results)) == sorted(expected)
+    assert verification(finished.results, finished.campaign)[1]
 
 
 def test_second_run_has_nothing_to_do(bench: Bench) -> None:
@@ -87,6 +95,20 @@ def test_edit_that_keeps_its_time_stamp_redoes_that_session_alone(bench: Bench) 
     assert pages == {"sessions/s03.pdf"}
     assert after["particles.csv"] != before["particles.csv"]
     assert "Nothing to be done" in bench.run("--dry-run").stdout
+
+
+def test_run_begins_with_what_changed_and_what_it_redoes(bench: Bench) -> None:
+    edit(bench.campaign / "sessions" / "s03" / "balance.csv", "particle,balance_voltage_V\n1,9999\n")
+    ran = bench.run()
+    good(ran)
+    told = ran.stdout.splitlines()
+    at = told.index("Changed since the last run: file edited sessions/s03/balance.csv.")
+    assert told[at + 1] == ("To be reduced anew: 1 of 12 sessions (s03); to be drawn anew: 1 of 12 sessions (s03).")
+    assert at < [place for place, line in enumerate(told) if line.startswith("reduce ")][0]
+    edit(bench.campaign / "campaign.yaml", "title: Another\nseed: 1\n")
+    told = bench.motescale("run", str(bench.campaign), str(bench.results)).stdout
+    assert "Changed since the last run: file edited campaign.yaml." in told
+    assert "To be reduced anew: no session; to be drawn anew: 12 of 12 sessions." in told
 
 
 def test_new_time_stamp_alone_redoes_nothing(bench: Bench) -> None:
@@ -135,6 +157,103 @@ def test_edit_of_the_program_redoes_everything(bench: Bench) -> None:
         module.write("# another\n")
     good(bench.run())
     assert bench.done == sorted(f"{what} {name}" for what in ("reduce", "draw") for name in SESSIONS)
+
+
+def test_edit_of_a_template_redoes_everything(bench: Bench) -> None:
+    with open(bench.program / "workflow" / "report" / "page.typ", "a") as template:
+        template.write("// another\n")
+    ran = bench.run()
+    good(ran)
+    assert bench.done == sorted(f"{what} {name}" for what in ("reduce", "draw") for name in SESSIONS)
+    assert "Changed since the last run: the program itself (its files differ)." in ran.stdout
+
+
+def test_another_version_of_a_library_redoes_everything_and_is_named(bench: Bench) -> None:
+    library = bench.program / "numpy-9.9.dist-info"  # found before the one that is installed
+    library.mkdir()
+    (library / "METADATA").write_text("Metadata-Version: 2.1\nName: numpy\nVersion: 9.9\n")
+    ran = bench.run()
+    good(ran)
+    assert bench.done == sorted(f"{what} {name}" for what in ("reduce", "draw") for name in SESSIONS)
+    assert " -> 9.9." in ran.stdout
+    assert "Changed since the last run: version of numpy: " in ran.stdout
+    assert json.loads((bench.results / "run.json").read_text())["versions"]["numpy"] == "9.9"
+
+
+def test_edit_of_a_rule_computes_nothing_and_is_laid_beside_the_results(bench: Bench) -> None:
+    with open(bench.program / "workflow" / "rules" / "tables.smk", "a") as rule:
+        rule.write("# another\n")
+    before = contents(bench.results)
+    good(bench.run())
+    after = contents(bench.results)
+    assert bench.done == []
+    assert {name for name in after if after[name] != before[name]} == {
+        "program/workflow/rules/tables.smk", "ro-crate-metadata.json", SUMS,
+    }  # fmt: skip
+    assert "Nothing to be done" in bench.run("--dry-run").stdout
+
+
+def test_what_is_compared_redoes_the_comparison_alone(bench: Bench) -> None:
+    compare = "compare: {quantity: charge, by: charged_with}\n"
+    edit(bench.campaign / "campaign.yaml", "title: Stand-in\nseed: 1\n" + compare)
+    before = contents(bench.results)
+    good(bench.run())
+    after = contents(bench.results)
+    assert bench.done == []
+    assert after["comparison.json"] != before["comparison.json"]
+    assert after["particles.csv"] == before["particles.csv"]
+
+
+def test_program_edited_while_it_runs_is_noticed(bench: Bench, finished: Bench) -> None:
+    module = bench.program / "reduction" / "drag.py"
+    text = module.read_text()
+    shutil.rmtree(bench.results)
+    going = bench.start(STANDIN_SECONDS="0.5")
+    bench.wait_for("reduce s03")
+    module.write_text(text + "# another\n")
+    out, _ = going.communicate(timeout=120)
+    assert going.returncode == 1
+    assert "the program or its libraries changed since the run began. Start the run again." in out
+    module.write_text(text)
+    good(bench.run())
+    assert contents(bench.results) == contents(finished.results)
+
+
+@pytest.mark.parametrize(
+    "name", ["particles.csv", "run.json", "comparison.json", "sessions/s03.pdf", "datapackage.json"]
+)
+def test_result_changed_by_hand_is_made_again_and_the_changed_one_is_kept(bench: Bench, name: str) -> None:
+    before = contents(bench.results)
+    with open(bench.results / name, "a") as result:
+        result.write("mine")
+    assert not verification(bench.results)[1]
+    ran = bench.run()
+    good(ran)
+    assert bench.done == []
+    assert f"{name} was changed after the run that made it: made again" in ran.stderr
+    assert contents(bench.results) == before
+    assert (bench.results / ".motescale" / "edited" / name).read_bytes() == before[name] + b"mine"
+    assert "Nothing to be done" in bench.run("--dry-run").stdout
+
+
+@pytest.mark.parametrize("name", ["particles.csv", "report.pdf", "readings/s03.csv", "program/Snakefile", SUMS])
+def test_result_that_is_gone_is_made_again(bench: Bench, name: str) -> None:
+    before = contents(bench.results)
+    (bench.results / name).unlink()
+    good(bench.run())
+    assert bench.done == []
+    assert contents(bench.results) == before
+
+
+def test_file_drawn_with_the_report_calls_for_the_report(bench: Bench) -> None:
+    sums = bench.results / SUMS
+    sums.write_text(sums.read_text() + f"{'0' * 64}  figures/agreement.csv\n")
+    kind = kind_of("figures/agreement.csv")
+    assert kind is not None
+    assert kind.maker == "report.pdf"
+    set_edited_aside(bench.results, print)
+    assert not (bench.results / "report.pdf").exists()
+    assert (bench.results / "particles.csv").exists()
 
 
 @pytest.mark.parametrize("what", ["records", "pages", "reduced", ""])
@@ -249,6 +368,8 @@ def test_plain_command_goes_on_after_a_kill(bench: Bench, finished: Bench, whole
         first.kill()  # its jobs outlive it
     first.communicate(timeout=60)
     assert not (bench.results / "particles.csv").exists()
+    assert bench.motescale("verify", str(bench.results)).stderr.startswith(f"{bench.results}: there is no finished run")
+    bench.calls.write_text("")
     ran = bench.run()
     good(ran)
     assert len(bench.done) < 2 * len(SESSIONS)  # what was finished is not done again
@@ -350,9 +471,14 @@ def test_command_that_is_interrupted_ends_its_workflow_and_goes_on_later(
     command = [sys.executable, "-m", "reduction.command", "run", str(bench.campaign), str(bench.results)]
     where = {"PYTHONPATH": str(bench.program), "PYTHONSAFEPATH": "1", "STANDIN_SECONDS": "0.3"}
     going = subprocess.Popen(
-        command, env=bench.environment | where, cwd=bench.campaign.parent, stdout=subprocess.PIPE,
-        stderr=subprocess.PIPE, text=True,
-    )  # fmt: skip
+        command,
+        env=bench.environment | where,
+        cwd=bench.campaign.parent,
+        stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE,
+        text=True,
+        preexec_fn=lambda: signal.signal(number, signal.SIG_DFL),
+    )  # fmt: skip - a shell's background jobs, the tests maybe among them, ignore interrupts
     bench.wait_for("reduce s03")
     going.send_signal(number)
     _, error = going.communicate(timeout=60)
@@ -384,8 +510,9 @@ def test_lint_remarks_on_nothing_but_environments(bench: Bench) -> None:
         capture_output=True, text=True, check=False, env=bench.environment, cwd=bench.campaign.parent,
     )  # fmt: skip
     remarks = [line.strip() for line in (ran.stdout + ran.stderr).splitlines() if line.startswith("    * ")]
-    # the environment is the one the program is installed in, pinned by requirements.lock
-    assert remarks == 8 * ["* Specify a conda environment or container for each rule.:"]
+    rules = sum((ROOT / "workflow" / "rules" / name).read_text().count("\nrule ") for name in RULES)
+    # the environment is the one the program is installed in, pinned by .locks/requirements.lock
+    assert remarks == rules * ["* Specify a conda environment or container for each rule.:"]
 
 
 @pytest.fixture(scope="module")
@@ -410,6 +537,25 @@ def test_example_runs_to_its_reports(example: Bench) -> None:
         head, *rows = (results / name).read_text().splitlines()
         assert head == ",".join(COLUMNS[name.removesuffix(".csv")])
         assert rows
+
+
+def test_every_file_that_the_page_of_the_example_leads_to_is_there(example: Bench) -> None:
+    page = (example.results / "report.html").read_text(encoding="utf-8")
+    links = {unquote(link) for link in re.findall(r'href="([^"#]+)"', page)}
+    assert {"report.pdf", "particles.csv", "sessions/s001.pdf", "readings/s001.csv", "figures/comparison.csv"} <= links
+    assert [link for link in sorted(links) if not (example.results / link).is_file()] == []
+
+
+def test_report_of_the_workflow_itself_is_made_without_a_network(example: Bench, tmp_path: Path) -> None:
+    nowhere = "http://127.0.0.1:9"  # the discard port: nothing listens, and what asks for the network fails
+    out = tmp_path / "how it was made.html"
+    proxies = {name: nowhere for name in ("http_proxy", "https_proxy", "HTTP_PROXY", "HTTPS_PROXY", "ALL_PROXY")}
+    good(example.finish(example.plain("--report", str(out)), **proxies))
+    text = out.read_text(encoding="utf-8")
+    for word in ("report.pdf", "particles.csv", "comparison.csv", "result by group with its interval",
+                 "One row per particle", "mean of the session means", "session_reports"):  # fmt: skip
+        assert word in text, word
+    assert "Nothing to be done" in example.run("--dry-run").stdout
 
 
 def test_example_is_compared_as_a_direct_call_of_the_library_compares(example: Bench) -> None:
@@ -449,6 +595,8 @@ def test_example_gives_the_same_bytes_again_and_names_no_place_or_person(example
     first, second = contents(example.results), contents(other)
     assert list(first) == list(second)
     assert [name for name in first if first[name] != second[name]] == []
+    assert verification(other, example.campaign)[1]
+    assert [name for name in first if kind_of(name) is None] == [SUMS]  # every kind of file is told in resultfiles
     told = [str(example.results.parent), str(ROOT), os.uname().nodename, f"{Path.home()}/"]
     for name, data in first.items():
         assert not [word for word in told if len(word) > 3 and word.encode() in data], name

@@ -13,7 +13,7 @@ import math
 import sys
 
 import numpy as np
-from scipy import stats
+from scipy import sparse, stats
 
 from reduction.groupmeans import group_means
 from reduction.pairs import pairs_of
@@ -33,7 +33,7 @@ def alarms(sessions: int, particles: int, correlation: float, trials: int, rng: 
         x = x + math.sqrt(1.0 - correlation) * rng.standard_normal((total, particles))
         mean = x.mean(axis=1)
         squares = ((x - mean[:, None]) ** 2).sum(axis=1)
-        cells = Cells(names, groups, count, mean, squares, nothing, nothing, np.zeros((total, 0)))
+        cells = Cells(names, groups, count, mean, squares, nothing, nothing, sparse.csr_array((total, 0)))
         (pair,) = pairs_of(group_means(cells), coverage=0.95)
         a, b = x[:sessions].ravel(), x[sessions:].ravel()
         p = [pair.p, stats.ttest_ind(mean[:sessions], mean[sessions:], equal_var=False).pvalue,

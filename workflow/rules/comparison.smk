@@ -9,10 +9,11 @@ rule comparison:
     output:
         expand(
             "{table}.csv",
-            table=["comparison", "contrasts", "session_means", "trends", "series", "group_budget"]
+            table=["contrasts", "session_means", "trends", "series", "group_budget"]
             + ["histogram", "charge_distribution", "charge_summary"],
         ),
         "comparison.json",
+        report("comparison.csv", caption="../report/captions/comparison.rst", category="Tables"),
     log:
         ".motescale/logs/comparison.log",
     params:

@@ -1,6 +1,6 @@
 # Purpose: draw the reports and lay out the files of each session.
 # Input:   the notes on the records; for the campaign's report the tables too.
-# Output:  the campaign's report; a report and a table of readings for each session.
+# Output:  the campaign's report, to print and for a screen; a report and a table of readings for each session.
 
 
 rule session_reports:
@@ -22,7 +22,8 @@ rule report:
         rules.comparison.output,
         expand(rules.session_reports.output, batch=PLAN.batches),
     output:
-        "report.pdf",
+        report("report.pdf", caption="../report/captions/report.rst", category="Report"),
+        "report.html",
     log:
         ".motescale/logs/report.log",
     params:

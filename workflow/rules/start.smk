@@ -22,13 +22,16 @@ from reduction.errors import ReductionError
 IS_RUN = workflow.exec_mode == ExecMode.DEFAULT  # and no job of a run that re-reads this file on a cluster
 
 try:
-    CAMPAIGN = resultsfolder.folder_of(config.get("campaign", str(HERE / "data_example")), "campaign")
-    RESULTS = resultsfolder.folder_of(config.get("results", "results"), "results")
+    if IS_RUN:
+        CAMPAIGN = resultsfolder.folder_of(config.get("campaign", str(HERE / "data_example")), "campaign")
+        RESULTS = resultsfolder.folder_of(config.get("results", "results"), "results")
+    else:
+        CAMPAIGN, RESULTS = (Path(os.environ[name]) for name in resultsfolder.FOLDERS)
     resultsfolder.check_code(HOME)
     if IS_RUN:
         HELD, PLAN = resultsfolder.begin(CAMPAIGN, RESULTS)
     else:
-        PLAN = batches.Plan.load(RESULTS)
+        HELD, PLAN = resultsfolder.join(RESULTS), batches.Plan.load(RESULTS)
 except ReductionError as error:
     raise WorkflowError(str(error)) from None
 
@@ -39,8 +42,10 @@ workdir: str(RESULTS)
 SESSIONS = sorted(PLAN.sessions)
 STEP = [sys.executable, "-m", "reduction.steps", "--campaign", str(CAMPAIGN)]
 
-os.environ.update(resultsfolder.job_environment(None if INSTALLED else HOME))
-shell.prefix(f'set -euo pipefail; step() {{ {shlex.join(STEP)} "$@"; }}; '.replace("{", "{{").replace("}", "}}"))
+os.environ.update(resultsfolder.job_environment(CAMPAIGN, RESULTS, None if INSTALLED else HOME))
+TOLD = 'echo "$*: ended by signal $((code - 128)), as where memory runs out. What is done stays: start the same command again."'
+STEPS = f'set -euo pipefail; step() {{ {shlex.join(STEP)} "$@" || {{ code=$?; [ $code -le 128 ] || {TOLD}; return $code; }}; }}; '
+shell.prefix(STEPS.replace("{", "{{").replace("}", "}}"))
 
 
 wildcard_constraints:

@@ -7,7 +7,8 @@ rule tables:
     input:
         ".motescale/adjusted.json" if PLAN.together else expand(rules.reduce.output, batch=PLAN.batches),
     output:
-        expand("{table}.csv", table=["particles", "methods", "agreement", "inputs", "components", "budget"]),
+        expand("{table}.csv", table=["methods", "agreement", "inputs", "components", "budget"]),
+        report("particles.csv", caption="../report/captions/particles.rst", category="Tables"),
         "run.json",
     log:
         ".motescale/logs/tables.log",

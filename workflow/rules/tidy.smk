@@ -9,6 +9,7 @@ rule tidy:
         rules.comparison.output,
         rules.report.output,
         rules.session_files.output,
+        MARKING,
     output:
         ".motescale/tidied.json",
     log:
