@@ -42,7 +42,7 @@ from reduction.wholefile import read_json
 from reduction.wording import counted, input_words
 
 Row = dict[str, Any]
-FIGURES = ("agreement", "comparison", "sessions_in_time")  # whose numbers have a file of their own
+FIGURES = ("agreement", "comparison", "field_on_axis", "sessions_in_time")  # whose numbers have a file of their own
 _ELSEWHERE = {
     "means": "comparison.csv",
     "differences": "contrasts.csv",
@@ -88,6 +88,7 @@ def content(
     plain_title = visible(str(title or settings.get("title") or ""))
     title = foreign(plain_title)
     budget = tables.read_table(results / "budget.csv", columns=BUDGET)
+    pages_of_traps = _trap_pages(facts, traps or {})
     parts = {
         "trust": _trust(particles, agreement, inputs),
         "left_out": left_out_table(run, facts, particles),
@@ -98,7 +99,7 @@ def content(
         "limits_said": _limits(budget, particles),
         "sessions": session_table(in_time, facts, particles),
         "inputs": input_table(inputs),
-        "traps": _trap_pages(facts, traps or {}),
+        "traps": [one for number, page in enumerate(pages_of_traps, 1) for one in trapreport.sections(number, page)],
         "particles": particle_table(particles, group_of),
         "listed": f"The first {MOST_LISTED} of {len(particles)} particles; particles.csv has all of them. "
         if len(particles) > MOST_LISTED
@@ -125,14 +126,21 @@ def content(
             comparisonreport.content(pages), figures, _charges(pages, charges), parts
         ),
     }
+    if pages_of_traps:
+        drawings["field_on_axis"] = _field_on_axis(pages_of_traps)
     return doc, drawings
 
 
 def _trap_pages(facts: Mapping[str, Row], traps: Mapping[str, Path]) -> list[Row]:
-    """Sections for each trap of a reduced session whose constants follow from the drawing of its electrodes."""
+    """A page for each trap of a reduced session whose constants follow from the drawing of its electrodes."""
     used = sorted({str(fact["trap"]) for fact in facts.values() if fact.get("trap") in traps})
-    pages = (trapreport.content(name, from_plain(read_json(traps[name]))) for name in used)
-    return [one for number, page in enumerate(pages, 1) for one in trapreport.sections(number, page)]
+    return [trapreport.content(name, from_plain(read_json(traps[name]))) for name in used]
+
+
+def _field_on_axis(pages: Sequence[Row]) -> figurestyle.Drawing:
+    """Numbers drawn in the figures of all drawn traps' fields, one under another."""
+    rows = [{"trap": page["name"], **row} for page in pages for row in page["axis_numbers"]]
+    return figurestyle.Drawing("", "", tuple(rows[0]), [tuple(row.values()) for row in rows])
 
 
 def _cut(title: str) -> str:

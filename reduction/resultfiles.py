@@ -53,6 +53,7 @@ KINDS = (
     Kind("figures/agreement.csv", "Numbers drawn in the figure of the methods' agreement.", "report.pdf"),
     Kind("figures/comparison.csv", "Numbers drawn in the figure of the groups.", "report.pdf"),
     Kind("figures/sessions_in_time.csv", "Numbers drawn in the figure of the sessions in time.", "report.pdf"),
+    Kind("figures/field_on_axis.csv", "Numbers drawn in the figures of drawn traps' fields.", "report.pdf"),
     Kind("report.pdf", "The campaign's report."),
     Kind("report.html", "The campaign's report as a page for a screen."),
     Kind("readings/{session}.csv", "The checked readings of one session in SI, with residuals, flags and exclusions."),

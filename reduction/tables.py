@@ -47,7 +47,7 @@ COLUMNS: dict[str, tuple[str, ...]] = {
 _TEXT = """session particle species charged_with status flags methods mass_from method reason method_a method_b quantity
     unit input scope owner shape result evaluation group group_a group_b log exclude note date scale kind members
     verdict covariate intrinsic_basis hints hint_codes look_at overridden words name email id_number pseudonym
-    criterion"""
+    criterion trap"""
 TEXT = frozenset(_TEXT.split())
 """Columns that hold text; every other one holds numbers."""
 

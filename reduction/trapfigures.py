@@ -17,6 +17,7 @@ _FILLS = {"drive": ("#3b4654", ""), "dc_above": ("#ffffff", "////"), "dc_below":
           "ground": ("#d5dade", "")}  # fmt: skip
 _WORDS = {"drive": "drive", "dc_above": "dc above", "dc_below": "dc below", "ground": "ground"}
 _TALLEST, _WIDEST = 100.0, 128.0  # of the drawing [mm on paper]
+AXIS_COLUMNS = ("height_mm", "drive_field_off_percent", "dc_field_off_percent")
 
 
 def electrodes(name: str, found: TrapConstants) -> Drawing:
@@ -130,5 +131,6 @@ def along_axis(name: str, found: TrapConstants) -> Drawing:
         f"height of {number(usable)} mm, where the drive's gradient is off by {100 * CHANGE:g} %, the fields are off "
         f"by: {', '.join(said)}."
     )
-    columns = ("height_mm", "drive_field_off_percent", "dc_field_off_percent")
-    return Drawing(svg(figure), alt, columns, [tuple(float(one) for one in row) for row in zip(*twin, strict=True)])
+    return Drawing(
+        svg(figure), alt, AXIS_COLUMNS, [tuple(float(one) for one in row) for row in zip(*twin, strict=True)]
+    )

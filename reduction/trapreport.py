@@ -34,6 +34,7 @@ CAPACITANCE_WORDS = (
     "As drawn, without leads and insulators. The capacitors of the supplies hold far more, and keep it when switched "
     "off."
 )
+AXIS_FILE = "figures/field_on_axis.csv"
 PAIRS_MOST = 12  # capacitances printed
 
 
@@ -68,6 +69,7 @@ def content(name: str, found: TrapConstants, source: str = "") -> Row:
         "budget": _budget(found),
         "better": [foreign(minus_words(text)) for text in measure_better(found)],
         "axis": set_drawing(axis, "Grey: the usable height."),
+        "axis_numbers": [dict(zip(axis.columns, row, strict=True)) for row in axis.rows],
         "departure": _departure(found),
         "departure_said": [foreign(minus_words(text)) for text in departure(found)],
         "capacitances": _capacitances(found),
@@ -79,8 +81,9 @@ def sections(number: int, page: Row) -> list[Row]:
     ident, name = f"trap-{number}", page["name"]
     labels, values = ([pair_of[which] for pair_of in page["facts"]] for which in (0, 1))
 
-    def drawn(what: str) -> Row:
-        return {"kind": "figure", "name": f"{ident}-{what}", "title": "", "figure": {**page[what], "files": []}}
+    def drawn(what: str, *files: str) -> Row:
+        figure = {**page[what], "files": list(files)}
+        return {"kind": "figure", "name": f"{ident}-{what}", "title": "", "figure": figure}
 
     return [
         section(ident, f"Trap {name} from the drawing of its electrodes",
@@ -90,7 +93,7 @@ def sections(number: int, page: Row) -> list[Row]:
                 table(page["budget"], "Dimensions and what they do to D and A",
                       "No dimension carries an uncertainty.", size=8.0, file="inputs.csv"),
                 bullets(page["better"]), level=2),
-        section(f"{ident}-departure", f"Departure of {name} from the linear field", drawn("axis"),
+        section(f"{ident}-departure", f"Departure of {name} from the linear field", drawn("axis", AXIS_FILE),
                 table(page["departure"], "Departure of the fields by height", size=8.0),
                 bullets(page["departure_said"]), level=2),
         section(f"{ident}-capacitances", f"Capacitances of {name}", lead(CAPACITANCE_WORDS),

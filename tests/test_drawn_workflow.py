@@ -14,6 +14,7 @@ from edited import Edited, copied
 from reduction import steps, trapsolution
 from reduction.batches import STATE, Plan
 from reduction.errors import InputError
+from reduction.tables import read_table
 from reduction.trapsolution import computed
 
 pytestmark = pytest.mark.workflow
@@ -127,6 +128,11 @@ def test_the_reports_carry_the_drawing(made, solved, tmp_path):
     page = (results / "report.html").read_text(encoding="utf-8")
     assert "Trap lantern-a from the drawing of its electrodes" in page
     assert "Numbers drawn: ." not in page
+    assert "figures/field_on_axis.csv" in page
+    drawn = read_table(results / "figures" / "field_on_axis.csv")
+    assert set(drawn["trap"]) == {"lantern-a"}
+    centre = drawn.iloc[drawn["height_mm"].abs().argmin()]
+    assert abs(centre["drive_field_off_percent"]) < abs(drawn["drive_field_off_percent"]).max() / 10
     session = text(results / "sessions" / "s001.pdf")
     assert "The field’s departure" in session or "The field's departure" in session
     assert "plate height" in session
