@@ -9,17 +9,10 @@ from typing import Any
 
 import pandas as pd
 
+from reduction.correlated import COLUMN
 from reduction.markscheme import METHODS, QUANTITIES
 from reduction.records import SessionRecord
 
-_COLUMNS = {
-    "charge_to_mass": ("charge_to_mass_C_per_kg", 1.0),
-    "drag_rate": ("drag_rate_per_s", 1.0),
-    "diameter": ("diameter_um", 1e-6),
-    "mass": ("mass_kg", 1.0),
-    "charge": ("charge_C", 1.0),
-    "surface_charge_density": ("surface_charge_density_C_per_m2", 1.0),
-}
 _AGREES = 2.0  # standard deviations within which a method alone is as good an answer as the adjusted value
 
 
@@ -91,7 +84,7 @@ def _quantities(name: str, row: pd.Series[Any], record: SessionRecord) -> dict[s
     found: dict[str, Reference] = {}
     methods, ways = _of(record.tables["methods"], name), record.facts.get("masses", {}).get(name, [])
     for quantity in QUANTITIES:
-        column, factor = _COLUMNS[quantity]
+        column, factor = COLUMN[quantity]
         value, u = float(row[column]) * factor, float(row[f"u_{column}"]) * factor
         if not (math.isfinite(value) and math.isfinite(u) and value != 0.0):
             continue
@@ -148,7 +141,7 @@ def _agreement(rows: pd.DataFrame) -> dict[frozenset[str], float]:
 def _budget(rows: pd.DataFrame, row: pd.Series[Any]) -> dict[str, tuple[Component, ...]]:
     found: dict[str, tuple[Component, ...]] = {}
     for quantity in QUANTITIES:
-        column, factor = _COLUMNS[quantity]
+        column, factor = COLUMN[quantity]
         value = abs(float(row[column]) * factor)
         own = rows[rows["result"] == quantity]
         if math.isfinite(value) and value > 0.0 and len(own):

@@ -98,13 +98,13 @@ def normal_equations(log: Readings, line: Linearised, particles: int, active: Fl
     jacobian = np.concatenate([line.private * active[log.particle], line.shared], axis=1)
     width = jacobian.shape[1]
     square, gradient = np.zeros((particles, width, width)), np.zeros((particles, width))
-    chi_square, readings = np.zeros(particles), np.zeros(particles, np.intp)
+    chi_square = np.zeros(particles)
     bounds = np.searchsorted(log.particle, np.arange(particles + 1))
-    readings[:] = np.diff(bounds)
+    readings = np.diff(bounds)
     residuals = np.nan_to_num(line.residual)  # a missing one has no slope either
-    for count in np.unique(readings[readings > 0]):
-        alike = np.flatnonzero(readings == count)
-        at = bounds[alike][:, None] + np.arange(count)
+    for number in np.unique(readings[readings > 0]):
+        alike = np.flatnonzero(readings == number)
+        at = bounds[alike][:, None] + np.arange(number)
         rows, residual = jacobian[at], residuals[at]
         turned = np.swapaxes(rows, 1, 2)
         square[alike], gradient[alike] = turned @ rows, (turned @ residual[:, :, None])[:, :, 0]

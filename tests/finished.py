@@ -4,15 +4,15 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from reduction import batches, steps
+from reduction import steps
 from reduction.simulation import simulate_campaign
 from reduction.simulationplan import Plan
 
 
 def finish(campaign: Path, results: Path) -> Path:
     """Run every step on a campaign, as the workflow would."""
-    steps.plan(campaign, results)
-    made = batches.Plan.load(results)
+    made = steps.plan(campaign, results)
+    steps.check(campaign, results)
     for batch in made.batches:
         steps.reduce(campaign, results, batch)
         steps.session_reports(results, batch)

@@ -10,6 +10,7 @@ from pathlib import Path
 import pytest
 from drawn import draw
 from edited import Edited, copied
+from finished import finish
 
 from reduction import steps, trapsolution
 from reduction.batches import STATE, Plan
@@ -49,20 +50,6 @@ def trap_file(made: Edited) -> Path:
     return path
 
 
-def run(campaign: Path, results: Path) -> None:
-    """All steps in their order, as the workflow has them."""
-    plan = steps.plan(campaign, results)
-    steps.check(campaign, results)
-    for batch in plan.batches:
-        steps.reduce(campaign, results, batch)
-        steps.session_reports(results, batch)
-    steps.tables(campaign, results)
-    steps.comparison(results)
-    steps.report(results)
-    steps.session_files(results)
-    steps.tidy(results)
-
-
 def kept(results: Path) -> list[Path]:
     return sorted((results / STATE / "traps").iterdir())
 
@@ -76,16 +63,16 @@ def contents(results: Path) -> dict[str, bytes]:
 
 def test_a_drawing_is_solved_once_and_kept_by_its_digest(made, solved, tmp_path):
     results = tmp_path / "results"
-    run(made.folder, results)
+    finish(made.folder, results)
     assert len(solved) == 1
     (path,) = kept(results)
     assert path.stem == Plan.load(results).drawings["lantern-a"]
     made.session(notes="another word")
     trap_file(made).write_text(trap_file(made).read_text() + "# measured on a dull Sunday\n")
-    run(made.folder, results)
+    finish(made.folder, results)
     assert len(solved) == 1
     trap_file(made).write_text(trap_file(made).read_text().replace("8.00(5)", "8.00(6)"))
-    run(made.folder, results)
+    finish(made.folder, results)
     assert len(solved) == 2
     (results / STATE / "traps" / ".tmp-killed").mkdir()
     steps.tidy(results)
@@ -98,11 +85,11 @@ def test_a_drawing_is_solved_once_and_kept_by_its_digest(made, solved, tmp_path)
 
 
 def test_the_same_bytes_whether_solved_or_kept(made, solved, tmp_path):
-    run(made.folder, tmp_path / "one")
-    run(made.folder, tmp_path / "two")
+    finish(made.folder, tmp_path / "one")
+    finish(made.folder, tmp_path / "two")
     assert len(solved) == 2
     shutil.rmtree(tmp_path / "two" / STATE / "records")
-    run(made.folder, tmp_path / "two")
+    finish(made.folder, tmp_path / "two")
     assert len(solved) == 2
     assert contents(tmp_path / "one") == contents(tmp_path / "two")
     assert kept(tmp_path / "one")[0].read_bytes() == kept(tmp_path / "two")[0].read_bytes()
@@ -112,7 +99,7 @@ def test_the_reports_carry_the_drawing(made, solved, tmp_path):
     if shutil.which("pdftotext") is None:
         pytest.skip("pdftotext is not installed")
     results = tmp_path / "results"
-    run(made.folder, results)
+    finish(made.folder, results)
 
     def text(path: Path) -> str:
         ran = subprocess.run(["pdftotext", "-layout", path, "-"], capture_output=True, text=True, check=True)
@@ -140,7 +127,7 @@ def test_the_reports_carry_the_drawing(made, solved, tmp_path):
 
 def test_a_drawing_that_cannot_be_computed_stops_the_run_and_touches_nothing(made, solved, tmp_path):
     results = tmp_path / "results"
-    run(made.folder, results)
+    finish(made.folder, results)
     before = contents(results)
     trap_file(made).write_text(trap_file(made).read_text().replace("8.00(5)", "0.50(5)"))
     steps.plan(made.folder, results)
